@@ -1,0 +1,134 @@
+//! The account of a recording: what `analysis.yaml` and `--json` carry.
+
+use serde::{Deserialize, Serialize};
+
+/// Everything the analyser has to say about one or more captures of a line.
+#[derive(Debug, Clone, PartialEq, Serialize, Deserialize)]
+pub struct Analysis {
+    /// The recordings, in the order given.
+    pub captures: Vec<CaptureSummary>,
+    /// The mains hum, or that there is none.
+    pub mains: Mains,
+    /// Harmonics found above the noise, by order.
+    pub harmonics: Vec<Harmonic>,
+    /// Frequency of the fundamental against time.
+    pub track: Vec<TrackPoint>,
+    /// Likely causes, the likeliest first; empty where nothing was found.
+    pub causes: Vec<Cause>,
+    /// Supplies besides the main one.
+    #[serde(default)]
+    pub other_supplies: Vec<OtherSupply>,
+    /// Harmonics above half the sample rate, and where they fold to.
+    #[serde(default)]
+    pub folding: Vec<FoldedHarmonic>,
+    /// Remarks for the user: short capture, clipping, what cannot be known.
+    #[serde(default)]
+    pub notes: Vec<String>,
+}
+
+/// One recording as it was read.
+#[derive(Debug, Clone, PartialEq, Serialize, Deserialize)]
+pub struct CaptureSummary {
+    /// Path as given.
+    pub path: String,
+    /// Sampling rate in hertz.
+    pub sample_rate_hz: u32,
+    /// Channels in the file.
+    pub channels: usize,
+    /// Channel analysed, 1 first.
+    pub channel: usize,
+    /// Length in seconds.
+    pub duration_s: f64,
+    /// Peak volts of a full-scale sample, where the brief says.
+    pub full_scale_v: Option<f64>,
+    /// Samples at the converter's limit, in runs.
+    pub clipped_samples: u64,
+    /// Largest sample as a fraction of full scale.
+    pub peak: f64,
+    /// Mean as a fraction of full scale.
+    pub mean: f64,
+    /// RMS about the mean as a fraction of full scale.
+    pub rms: f64,
+}
+
+/// The mains fundamental.
+#[derive(Debug, Clone, PartialEq, Serialize, Deserialize)]
+pub struct Mains {
+    /// Whether hum was found at all.
+    pub found: bool,
+    /// Nominal frequency of the supply (16.7, 50, 60, 400), where one fits.
+    pub nominal_hz: Option<f64>,
+    /// Mean frequency: phase advance over the capture divided by 2πT.
+    pub frequency_hz: Option<f64>,
+    /// Standard error of `frequency_hz`.
+    pub frequency_se_hz: Option<f64>,
+    /// Half-width about the mean holding the 1 s mean frequency for 95 % of the time.
+    pub spread_hz: Option<f64>,
+    /// What the estimator's noise alone would show as spread.
+    pub spread_floor_hz: Option<f64>,
+    /// How sure the finding is, 0 to 1.
+    pub confidence: f64,
+}
+
+/// One harmonic of the mains.
+#[derive(Debug, Clone, PartialEq, Serialize, Deserialize)]
+pub struct Harmonic {
+    /// Order, 1 for the fundamental.
+    pub order: u32,
+    /// Mean frequency in hertz.
+    pub frequency_hz: f64,
+    /// RMS relative to the RMS of a full-scale sine (AES17).
+    pub level_dbfs: f64,
+    /// RMS volts, where full scale is known.
+    pub rms_v: Option<f64>,
+    /// Phase of the cosine at the start of the capture, degrees.
+    pub phase_deg: f64,
+    /// Line power over the noise power in a bandwidth of 1/T, in decibels.
+    pub over_floor_db: f64,
+}
+
+/// One point of the frequency track.
+#[derive(Debug, Clone, PartialEq, Serialize, Deserialize)]
+pub struct TrackPoint {
+    /// Middle of the window, seconds from the start.
+    pub time_s: f64,
+    /// Frequency of the fundamental in the window.
+    pub frequency_hz: f64,
+    /// Its standard error.
+    pub se_hz: f64,
+}
+
+/// One likely cause.
+#[derive(Debug, Clone, PartialEq, Serialize, Deserialize)]
+pub struct Cause {
+    /// What the pattern points to; `undetermined` is an answer.
+    pub cause: String,
+    /// The measured numbers that point there.
+    pub evidence: String,
+    /// What to try first.
+    pub first_cure: String,
+}
+
+/// Another supply on the same line.
+#[derive(Debug, Clone, PartialEq, Serialize, Deserialize)]
+pub struct OtherSupply {
+    /// Nominal frequency.
+    pub nominal_hz: f64,
+    /// Measured frequency.
+    pub frequency_hz: f64,
+    /// Level of its strongest line.
+    pub level_dbfs: f64,
+}
+
+/// A harmonic that lies above half the sample rate.
+#[derive(Debug, Clone, PartialEq, Serialize, Deserialize)]
+pub struct FoldedHarmonic {
+    /// Order of the harmonic.
+    pub order: u32,
+    /// True frequency.
+    pub frequency_hz: f64,
+    /// Where it appears in the recording.
+    pub appears_at_hz: f64,
+    /// What that means for the reading, where it falls on something.
+    pub remark: String,
+}

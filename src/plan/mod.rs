@@ -1,0 +1,7 @@
+//! The line brief, the Q window, the search, builds, trim.
+
+mod brief;
+mod design;
+
+pub use brief::{Centre, KeepBand, LineBrief, ReductionTarget};
+pub use design::*;

@@ -1,0 +1,1 @@
+//! Charts, schematic, parts list, bench sheet, the page.
