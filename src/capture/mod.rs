@@ -1,10 +1,24 @@
 //! Recordings in and out, in blocks: samples as fractions of full scale.
 
+mod error;
+mod header;
 mod memory;
+mod sample;
+mod wav;
+mod writer;
 
+pub use error::CaptureError;
 pub use memory::MemoryCapture;
+pub use sample::SampleFormat;
+pub use wav::{Salvage, Salvaged, WavCapture};
+pub use writer::{WavWriter, Written};
 
-use std::path::PathBuf;
+/// Lowest sampling rate that is read, hertz.
+pub const LOWEST_RATE_HZ: u32 = 100;
+/// Highest sampling rate that is read, hertz.
+pub const HIGHEST_RATE_HZ: u32 = 768_000;
+/// Shortest recording that is read, seconds: less holds too few mains periods.
+pub const SHORTEST_S: f64 = 1.0;
 
 /// What a recording says of itself before any sample is read.
 #[derive(Debug, Clone, PartialEq)]
@@ -34,6 +48,11 @@ pub trait Capture {
     /// The name to use for it in messages and results.
     fn name(&self) -> &str;
 
+    /// How its samples were stored, so that results can be stored alike.
+    fn sample_format(&self) -> SampleFormat {
+        SampleFormat::F32
+    }
+
     /// Goes back to the first frame.
     ///
     /// # Errors
@@ -47,17 +66,4 @@ pub trait Capture {
     /// # Errors
     /// [`CaptureError`] when the file cannot be read or a sample is not a number.
     fn read_block(&mut self, planes: &mut [Vec<f64>], frames: usize) -> Result<usize, CaptureError>;
-}
-
-/// Why a recording could not be read or written.
-#[derive(Debug, thiserror::Error)]
-pub enum CaptureError {
-    /// The file system refused.
-    #[error("{path}: {source}", path = path.display())]
-    Io {
-        /// The file.
-        path: PathBuf,
-        /// What the system said.
-        source: std::io::Error,
-    },
 }
