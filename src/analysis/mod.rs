@@ -1,10 +1,17 @@
 //! What hums: fundamental, harmonics, frequency track, spread, supplies, cause.
 
+mod decimator;
 mod findings;
+mod orders;
 mod phase;
+mod phasors;
+mod spectrum;
+mod window;
 
 pub use findings::*;
+pub use orders::{OrderLevel, OrderMeter};
 pub use phase::PhaseTrack;
+pub use spectrum::{Spectrum, SpectrumMeter};
 
 /// What the user asks of the analyser.
 #[derive(Debug, Clone, Default)]

@@ -1,0 +1,244 @@
+//! Levels of harmonics along a known phase track, streaming.
+
+use super::PhaseTrack;
+use super::phasors::{BlockPhasors, PhasorBank, block_response, wrapped_degrees};
+use super::window::BLACKMAN_HARRIS;
+use num_complex::Complex64;
+use std::f64::consts::TAU;
+
+/// Blocks in one stretch of the noise measurement.
+const STRETCH_BLOCKS: usize = 128;
+/// Share of the capture that fades in, and fades out.
+const FADE_SHARE: f64 = 0.12;
+/// Longest fade in seconds: lines 1 Hz apart are then apart by over 90 dB.
+const LONGEST_FADE_S: f64 = 4.0;
+
+/// One harmonic as measured along the track.
+#[derive(Debug, Clone, PartialEq)]
+pub struct OrderLevel {
+    /// Order, 1 for the fundamental.
+    pub order: u32,
+    /// Mean frequency in hertz: the order times the track's.
+    pub frequency_hz: f64,
+    /// RMS relative to the RMS of a full-scale sine (AES17).
+    pub level_dbfs: f64,
+    /// Standard error of the level in decibels, from the noise around the line.
+    pub level_se_db: f64,
+    /// Phase of the cosine at the start of the capture, degrees from −180 to 180.
+    pub phase_deg: f64,
+    /// Line power over the noise power in a bandwidth of 1/T, in decibels.
+    pub over_floor_db: f64,
+    /// Noise around the line in a bandwidth of 1/T, same reference as the level.
+    pub floor_dbfs: f64,
+}
+
+/// Measures harmonics coherently along a phase track, block by block.
+///
+/// All samples are taken with one long window that fades in and out, so other
+/// harmonics and a strong wanted signal do not leak into a weak residual; the
+/// noise around each line comes from the spectrum beside it. Memory does not
+/// grow with the recording.
+pub struct OrderMeter {
+    bank: PhasorBank,
+    track: PhaseTrack,
+    orders: Vec<u32>,
+    duration_s: f64,
+    fade: Fade,
+    sums: Vec<Complex64>,
+    weight: f64,
+    weight_squared: f64,
+    blocks_seen: usize,
+    noise: NoiseBeside,
+}
+
+impl OrderMeter {
+    /// `track` runs over the whole recording: its last knot is the end.
+    pub fn new(sample_rate_hz: f64, track: &PhaseTrack, orders: &[u32]) -> Self {
+        let duration_s = track.time_s[track.time_s.len() - 1];
+        let hop_s = block_hop_s(track.mean_frequency_hz(), duration_s);
+        let bank = PhasorBank::new(sample_rate_hz, track, orders, hop_s);
+        let blocks = bank.blocks_in((duration_s * sample_rate_hz).round() as u64);
+        let fade = Fade::new(blocks, bank.hop_s());
+        let noise = NoiseBeside::new(blocks, bank.hop_s(), orders.len());
+        Self {
+            bank,
+            track: track.clone(),
+            orders: orders.to_vec(),
+            duration_s,
+            fade,
+            sums: vec![Complex64::ZERO; orders.len()],
+            weight: 0.0,
+            weight_squared: 0.0,
+            blocks_seen: 0,
+            noise,
+        }
+    }
+
+    /// Takes the next samples.
+    pub fn push(&mut self, samples: &[f64]) {
+        let blocks = self.bank.push(samples);
+        self.take(blocks);
+    }
+
+    /// The levels, in the sequence of `orders`.
+    pub fn finish(mut self) -> Vec<OrderLevel> {
+        let blocks = self.bank.finish();
+        self.take(blocks);
+        let densities = self.noise.densities();
+        let orders = self.orders.iter().zip(&self.sums).zip(densities);
+        orders.map(|((&order, &sum), density)| self.level(order, sum, density)).collect()
+    }
+
+    fn take(&mut self, blocks: Vec<BlockPhasors>) {
+        for block in blocks {
+            let weight = self.fade.at(self.blocks_seen);
+            for (sum, value) in self.sums.iter_mut().zip(&block.values) {
+                *sum += weight * value;
+            }
+            self.weight += weight;
+            self.weight_squared += weight * weight;
+            self.noise.take(&block.values);
+            self.blocks_seen += 1;
+        }
+    }
+
+    fn level(&self, order: u32, sum: Complex64, density: f64) -> OrderLevel {
+        let k = f64::from(order);
+        let phasor = if self.weight > 0.0 { sum / self.weight } else { Complex64::ZERO };
+        let start = k * self.track.phase_at(0.0);
+        let floor = density / self.duration_s;
+        let power = 0.5 * phasor.norm_sqr();
+        // Noise bandwidth of the weighted sum of blocks, in hertz.
+        let bandwidth_hz = self.weight_squared / (self.weight * self.weight * self.bank.hop_s());
+        let relative = (0.5 * density * bandwidth_hz / power.max(1e-40)).sqrt();
+        OrderLevel {
+            order,
+            frequency_hz: k * self.track.mean_frequency_hz(),
+            level_dbfs: power_dbfs(power),
+            level_se_db: if relative.is_finite() { (relative * 20.0 / 10f64.ln()).min(99.0) } else { 99.0 },
+            phase_deg: wrapped_degrees(phasor.arg() + start.rem_euclid(TAU)),
+            over_floor_db: power_db(power / floor.max(1e-40)).min(400.0),
+            floor_dbfs: power_dbfs(floor),
+        }
+    }
+}
+
+/// Mean-square value as decibels under a full-scale sine (mean square ½).
+pub(super) fn power_dbfs(mean_square: f64) -> f64 {
+    power_db(2.0 * mean_square)
+}
+
+/// 10·log₁₀ that stays finite: nothing reads −400 dB.
+pub(super) fn power_db(ratio: f64) -> f64 {
+    10.0 * ratio.max(1e-40).log10()
+}
+
+/// Time between blocks: three cycles, but at least some twenty blocks.
+pub(super) fn block_hop_s(fundamental_hz: f64, duration_s: f64) -> f64 {
+    (3.0 / fundamental_hz).min(duration_s / 20.0)
+}
+
+/// Weights that rise and fall smoothly over the blocks of a capture.
+pub(super) struct Fade {
+    blocks: usize,
+    length: f64,
+}
+
+impl Fade {
+    pub fn new(blocks: usize, hop_s: f64) -> Self {
+        let length = (FADE_SHARE * blocks as f64).min(LONGEST_FADE_S / hop_s);
+        Self { blocks, length }
+    }
+
+    /// Weight of block number `index`.
+    pub fn at(&self, index: usize) -> f64 {
+        let from_end = (self.blocks as f64 - 1.0 - index as f64).max(0.0);
+        let rise = |n: f64| BLACKMAN_HARRIS.ramp((n + 1.0) / (self.length + 1.0));
+        rise(index as f64) * rise(from_end)
+    }
+}
+
+/// Noise density beside each line, from spectra of the phasors themselves.
+///
+/// Stretches of up to 128 blocks are transformed under a Blackman–Harris
+/// window; the bins from 5 away from the line outwards are averaged over the
+/// stretches, and their median is the density: another line among them does
+/// not count.
+pub(super) struct NoiseBeside {
+    stretch: usize,
+    window: Vec<f64>,
+    window_power: f64,
+    hop_s: f64,
+    /// Bins looked at, as offsets from the line.
+    bins: Vec<i32>,
+    gathered: Vec<Vec<Complex64>>,
+    power: Vec<Vec<f64>>,
+    stretches: usize,
+}
+
+impl NoiseBeside {
+    pub fn new(blocks: usize, hop_s: f64, lines: usize) -> Self {
+        let parts = blocks.div_ceil(STRETCH_BLOCKS).max(1);
+        let stretch = (blocks / parts).max(1);
+        let window = BLACKMAN_HARRIS.samples(stretch);
+        let window_power = window.iter().map(|w| w * w).sum();
+        let outer = (stretch as i32 / 4).clamp(8, 24).min(stretch as i32 / 2);
+        let inner = 5.min(outer);
+        let bins: Vec<i32> = (-outer..=outer).filter(|m| m.abs() >= inner).collect();
+        let power = vec![vec![0.0; bins.len()]; lines];
+        let gathered = vec![Vec::with_capacity(stretch); lines];
+        Self { stretch, window, window_power, hop_s, bins, gathered, power, stretches: 0 }
+    }
+
+    /// Takes one block's phasors.
+    pub fn take(&mut self, values: &[Complex64]) {
+        for (line, value) in self.gathered.iter_mut().zip(values) {
+            line.push(*value);
+        }
+        if self.gathered.first().is_some_and(|line| line.len() == self.stretch) {
+            self.close_stretch();
+        }
+    }
+
+    fn close_stretch(&mut self) {
+        let n = self.stretch as f64;
+        let turns: Vec<Complex64> = (0..self.stretch).map(|i| Complex64::cis(-TAU * i as f64 / n)).collect();
+        for (line, power) in self.gathered.iter_mut().zip(&mut self.power) {
+            for (slot, &m) in power.iter_mut().zip(&self.bins) {
+                let mut sum = Complex64::ZERO;
+                for (i, (value, w)) in line.iter().zip(&self.window).enumerate() {
+                    let turn = (i as i64 * i64::from(m)).rem_euclid(self.stretch as i64);
+                    sum += value * turns[turn as usize] * w;
+                }
+                *slot += sum.norm_sqr();
+            }
+            line.clear();
+        }
+        self.stretches += 1;
+    }
+
+    /// One-sided density at each line: mean square per hertz.
+    pub fn densities(&self) -> Vec<f64> {
+        self.power.iter().map(|power| self.density(power)).collect()
+    }
+
+    fn density(&self, power: &[f64]) -> f64 {
+        if self.stretches == 0 || self.bins.is_empty() {
+            return 0.0;
+        }
+        let stretches = self.stretches as f64;
+        let mut levels: Vec<f64> = power
+            .iter()
+            .zip(&self.bins)
+            .map(|(p, &m)| {
+                let offset_hz = f64::from(m) / (self.stretch as f64 * self.hop_s);
+                let response = block_response(offset_hz, self.hop_s);
+                0.5 * p * self.hop_s / (stretches * self.window_power * response * response)
+            })
+            .collect();
+        let middle = levels.len() / 2;
+        let (_, median, _) = levels.select_nth_unstable_by(middle, f64::total_cmp);
+        // Median of an average of exponentials (Wilson and Hilferty 1931).
+        *median / (1.0 - 1.0 / (9.0 * stretches)).powi(3)
+    }
+}
