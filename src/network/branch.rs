@@ -3,7 +3,8 @@
 use num_complex::Complex64;
 use serde::{Deserialize, Serialize};
 
-use crate::parts::{Part, PartKind};
+use super::values::{PartValue, Values};
+use crate::parts::Part;
 
 /// An impedance N/D with the denominator kept apart.
 #[derive(Debug, Clone, Copy, PartialEq)]
@@ -15,23 +16,50 @@ pub struct Fraction {
 }
 
 impl Fraction {
+    /// A break: no current at any voltage.
+    pub const OPEN: Self =
+        Self { numerator: Complex64::new(1.0, 0.0), denominator: Complex64::new(0.0, 0.0) };
+
+    /// A wire: no voltage at any current.
+    pub const SHORT: Self =
+        Self { numerator: Complex64::new(0.0, 0.0), denominator: Complex64::new(1.0, 0.0) };
+
     /// N₁/D₁ + N₂/D₂.
+    ///
+    /// Two opens (two capacitors at DC) would make 0/0: they are an open. It is
+    /// the only way to 0/0 from two fractions that are not 0/0 themselves.
     #[must_use]
     pub fn in_series(self, other: Self) -> Self {
+        if is_zero(self.denominator) && is_zero(other.denominator) {
+            return Self::OPEN;
+        }
         Self {
             numerator: self.numerator * other.denominator + other.numerator * self.denominator,
             denominator: self.denominator * other.denominator,
         }
     }
 
-    /// (N₁/D₁)∥(N₂/D₂).
+    /// (N₁/D₁)∥(N₂/D₂). Two shorts are a short.
     #[must_use]
     pub fn in_parallel(self, other: Self) -> Self {
+        if is_zero(self.numerator) && is_zero(other.numerator) {
+            return Self::SHORT;
+        }
         Self {
             numerator: self.numerator * other.numerator,
             denominator: self.numerator * other.denominator + other.numerator * self.denominator,
         }
     }
+
+    /// N/D as one number; infinite for an open.
+    pub fn quotient(self) -> Complex64 {
+        self.numerator / self.denominator
+    }
+}
+
+/// Whether both parts are exactly zero.
+pub(super) fn is_zero(z: Complex64) -> bool {
+    z.re == 0.0 && z.im == 0.0
 }
 
 /// Parts in series and in parallel. `P` names a part: an index into the
@@ -100,16 +128,21 @@ impl Branch<usize> {
     /// # Panics
     /// When the branch names a part that is not there, or holds no part.
     pub fn impedance(&self, parts: &[Part], omega: f64) -> Fraction {
+        self.impedance_of(parts, omega)
+    }
+
+    /// The same from any list of values.
+    pub(super) fn impedance_of<V: Values + ?Sized>(&self, values: &V, omega: f64) -> Fraction {
         match self {
-            Self::Part(index) => part_impedance(&parts[*index], omega),
+            Self::Part(index) => values.value(*index).impedance(omega),
             Self::Series { series } => series
                 .iter()
-                .map(|branch| branch.impedance(parts, omega))
+                .map(|branch| branch.impedance_of(values, omega))
                 .reduce(Fraction::in_series)
                 .expect("not empty"),
             Self::Parallel { parallel } => parallel
                 .iter()
-                .map(|branch| branch.impedance(parts, omega))
+                .map(|branch| branch.impedance_of(values, omega))
                 .reduce(Fraction::in_parallel)
                 .expect("not empty"),
         }
@@ -120,23 +153,5 @@ impl Branch<usize> {
 ///
 /// Coil: (r + jωL)∥C_self. Capacitor: r + 1/jωC. Resistor and trimmer: R.
 pub fn part_impedance(part: &Part, omega: f64) -> Fraction {
-    let r = part.series_resistance_ohm;
-    match part.kind {
-        PartKind::Resistor | PartKind::Trimmer => Fraction {
-            numerator: Complex64::new(part.setting_ohm.unwrap_or(part.value_si), 0.0),
-            denominator: Complex64::new(1.0, 0.0),
-        },
-        PartKind::Capacitor => {
-            let susceptance = omega * part.value_si;
-            Fraction {
-                numerator: Complex64::new(1.0, susceptance * r),
-                denominator: Complex64::new(0.0, susceptance),
-            }
-        }
-        PartKind::Coil => {
-            let winding = Complex64::new(r, omega * part.value_si);
-            let own = Complex64::new(0.0, omega * part.self_capacitance_f);
-            Fraction { numerator: winding, denominator: 1.0 + own * winding }
-        }
-    }
+    PartValue::from(part).impedance(omega)
 }

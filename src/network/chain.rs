@@ -3,7 +3,8 @@
 use num_complex::Complex64;
 use serde::{Deserialize, Serialize};
 
-use super::branch::Branch;
+use super::branch::{Branch, is_zero};
+use super::values::Values;
 use crate::parts::Part;
 
 /// A chain matrix M/d: V₁ = (M₁₁V₂ + M₁₂I₂)/d, I₁ = (M₂₁V₂ + M₂₂I₂)/d, with I₂
@@ -36,8 +37,14 @@ impl Chain {
     ///
     /// Admittances add: y₁₁ = M₂₂/M₁₂, y₂₂ = M₁₁/M₁₂, y₁₂ = y₂₁ = −d/M₁₂; cleared
     /// of the common denominator M₁₂M₁₂′ nothing is left to divide by.
+    ///
+    /// Two chains with M₁₂ = 0 are wires with branches to ground hung on them:
+    /// side by side they do what they do one after the other.
     #[must_use]
     pub fn beside(&self, other: &Self) -> Self {
+        if is_zero(self.m[0][1]) && is_zero(other.m[0][1]) {
+            return self.then(other);
+        }
         let [[a11, a12], [a21, a22]] = self.m;
         let [[b11, b12], [b21, b22]] = other.m;
         Self {
@@ -120,19 +127,24 @@ impl TwoPort<usize> {
     /// # Panics
     /// When a branch names a part that is not there, or `beside` is empty.
     pub fn chain(&self, parts: &[Part], omega: f64) -> Chain {
+        self.chain_from(parts, omega)
+    }
+
+    /// The same from any list of values.
+    pub(super) fn chain_from<V: Values + ?Sized>(&self, values: &V, omega: f64) -> Chain {
         let zero = Complex64::new(0.0, 0.0);
         match self {
             Self::Series { series } => {
-                let z = series.impedance(parts, omega);
+                let z = series.impedance_of(values, omega);
                 Chain { m: [[z.denominator, z.numerator], [zero, z.denominator]], d: z.denominator }
             }
             Self::Shunt { shunt } => {
-                let z = shunt.impedance(parts, omega);
+                let z = shunt.impedance_of(values, omega);
                 Chain { m: [[z.numerator, zero], [z.denominator, z.numerator]], d: z.numerator }
             }
             Self::Beside { beside } => beside
                 .iter()
-                .map(|chain| chain_of(chain, parts, omega))
+                .map(|chain| chain_of(chain, values, omega))
                 .reduce(|a, b| a.beside(&b))
                 .expect("at least one chain"),
         }
@@ -140,6 +152,10 @@ impl TwoPort<usize> {
 }
 
 /// Chain matrix of two-ports one after the other.
-pub(super) fn chain_of(ports: &[TwoPort], parts: &[Part], omega: f64) -> Chain {
-    ports.iter().fold(Chain::THROUGH, |chain, port| chain.then(&port.chain(parts, omega)))
+pub(super) fn chain_of<'a, V: Values + ?Sized>(
+    ports: impl IntoIterator<Item = &'a TwoPort>,
+    values: &V,
+    omega: f64,
+) -> Chain {
+    ports.into_iter().fold(Chain::THROUGH, |chain, port| chain.then(&port.chain_from(values, omega)))
 }

@@ -5,7 +5,8 @@ use std::f64::consts::TAU;
 use num_complex::Complex64;
 use serde::{Deserialize, Serialize};
 
-use super::chain::{Chain, TwoPort, chain_of};
+use super::chain::{Chain, TwoPort};
+use super::evaluate;
 use crate::parts::Part;
 
 /// What drives the line: an EMF behind a resistance and an inductance.
@@ -64,43 +65,62 @@ pub enum NetworkError {
     },
 }
 
+impl Source {
+    /// R + jωL.
+    pub fn impedance(&self, omega: f64) -> Complex64 {
+        Complex64::new(self.resistance_ohm, omega * self.inductance_h)
+    }
+}
+
+impl Load {
+    /// 1/R + jωC.
+    pub fn admittance(&self, omega: f64) -> Complex64 {
+        Complex64::new(1.0 / self.resistance_ohm, omega * self.capacitance_f)
+    }
+}
+
 impl Circuit {
     /// Chain matrix of all sections at `frequency_hz`.
     pub fn chain(&self, frequency_hz: f64) -> Chain {
-        let omega = TAU * frequency_hz;
-        self.sections
-            .iter()
-            .fold(Chain::THROUGH, |chain, section| chain.then(&chain_of(&section.stages, &self.parts, omega)))
+        evaluate::chain_with(self, self.parts.as_slice(), TAU * frequency_hz)
     }
 
     /// Load voltage over source EMF at `frequency_hz`.
     pub fn transfer(&self, frequency_hz: f64) -> Complex64 {
-        let chain = self.chain(frequency_hz);
-        chain.d / self.loading(&chain, frequency_hz)
+        evaluate::transfer(self, self.parts.as_slice(), frequency_hz)
     }
 
     /// Load voltage with the network over load voltage without it.
     pub fn insertion(&self, frequency_hz: f64) -> Complex64 {
-        self.transfer(frequency_hz) * self.loading(&Chain::THROUGH, frequency_hz)
+        self.transfer(frequency_hz) * self.wire_loading(frequency_hz)
+    }
+
+    /// Insertion gain in decibels: negative where the network takes away, −∞ in a perfect null.
+    pub fn insertion_db(&self, frequency_hz: f64) -> f64 {
+        10.0 * self.insertion(frequency_hz).norm_sqr().log10()
     }
 
     /// Output impedance at the load, source and load included, at `frequency_hz`.
     pub fn output_impedance(&self, frequency_hz: f64) -> Complex64 {
-        let chain = self.chain(frequency_hz);
-        (chain.m[0][1] + self.source_impedance(frequency_hz) * chain.m[1][1])
-            / self.loading(&chain, frequency_hz)
+        evaluate::output_impedance(self, self.parts.as_slice(), frequency_hz)
+    }
+
+    /// All two-ports from the source on.
+    pub(super) fn ports(&self) -> impl DoubleEndedIterator<Item = &TwoPort> {
+        self.sections.iter().flat_map(|section| &section.stages)
     }
 
     /// M₁₁ + M₁₂Yl + Zs(M₂₁ + M₂₂Yl).
-    fn loading(&self, chain: &Chain, frequency_hz: f64) -> Complex64 {
-        let load =
-            Complex64::new(1.0 / self.load.resistance_ohm, TAU * frequency_hz * self.load.capacitance_f);
+    pub(super) fn loading(&self, chain: &Chain, omega: f64) -> Complex64 {
+        let load = self.load.admittance(omega);
         let m = &chain.m;
-        m[0][0] + m[0][1] * load + self.source_impedance(frequency_hz) * (m[1][0] + m[1][1] * load)
+        m[0][0] + m[0][1] * load + self.source.impedance(omega) * (m[1][0] + m[1][1] * load)
     }
 
-    fn source_impedance(&self, frequency_hz: f64) -> Complex64 {
-        Complex64::new(self.source.resistance_ohm, TAU * frequency_hz * self.source.inductance_h)
+    /// Source EMF over load voltage with the source wired straight to the load: 1 + ZsYl.
+    pub(super) fn wire_loading(&self, frequency_hz: f64) -> Complex64 {
+        let omega = TAU * frequency_hz;
+        1.0 + self.source.impedance(omega) * self.load.admittance(omega)
     }
 }
 

@@ -8,7 +8,12 @@
 mod branch;
 mod chain;
 mod circuit;
+mod evaluate;
+mod ladder;
+mod values;
 
 pub use branch::{Branch, Fraction, part_impedance};
 pub use chain::{Chain, TwoPort};
 pub use circuit::{Circuit, Load, NetworkError, Section, Source};
+pub use evaluate::Evaluator;
+pub use values::PartValue;

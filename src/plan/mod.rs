@@ -3,5 +3,5 @@
 mod brief;
 mod design;
 
-pub use brief::{Centre, KeepBand, LineBrief, ReductionTarget};
+pub use brief::{BriefError, Centre, KeepBand, LineBrief, ReductionTarget};
 pub use design::*;

@@ -1,0 +1,211 @@
+//! Response of a circuit with part values of one's own choice, fast.
+
+use std::f64::consts::TAU;
+
+use num_complex::Complex64;
+
+use super::branch::is_zero;
+use super::chain::{Chain, chain_of};
+use super::circuit::{Circuit, Load, Source};
+use super::ladder::{Lanes, Walk, is_sound};
+use super::values::{PartValue, Values};
+
+/// Frequencies walked together by [`Evaluator::insertion_power_each`].
+const LANES: usize = 4;
+
+/// Angular frequency that stands for DC where DC itself gives 0/0: low enough
+/// that every network of real parts has reached its limit (ωτ < 1e-8 at τ = 1e4 s).
+const NEAR_DC_RAD_S: f64 = 1e-12;
+
+/// Relative distance from a frequency at which a lossless network gives 0/0.
+const NUDGE: f64 = 1.0 / (1u32 << 30) as f64;
+
+/// A circuit seen with these part values instead of its own: nothing is copied,
+/// nothing is allocated, so that a search or a draw of builds can change numbers
+/// in one array and look again.
+///
+/// ```
+/// # use notchwright::network::*;
+/// # use notchwright::parts::{Part, PartKind};
+/// let circuit = Circuit {
+///     source: Source { resistance_ohm: 350.0, inductance_h: 0.0 },
+///     load: Load { resistance_ohm: 1e6, capacitance_f: 220e-12 },
+///     sections: vec![Section {
+///         kind: "plain low-pass".into(),
+///         stages: vec![
+///             TwoPort::Series { series: Branch::Part(0) },
+///             TwoPort::Shunt { shunt: Branch::Part(1) },
+///         ],
+///     }],
+///     parts: vec![
+///         Part::ideal("R1", PartKind::Resistor, 1e3),
+///         Part::ideal("C1", PartKind::Capacitor, 1e-6),
+///     ],
+/// };
+/// let mut values = circuit.values();
+/// let before = circuit.evaluator(&values).insertion_db(50.0);
+/// values[1].value_si *= 2.0;
+/// assert!(circuit.evaluator(&values).insertion_db(50.0) < before);
+/// ```
+#[derive(Debug, Clone, Copy)]
+pub struct Evaluator<'a> {
+    circuit: &'a Circuit,
+    values: &'a [PartValue],
+}
+
+impl Circuit {
+    /// The values of the parts as plain numbers, in the order of `parts`.
+    pub fn values(&self) -> Vec<PartValue> {
+        self.parts.iter().map(PartValue::from).collect()
+    }
+
+    /// This circuit with `values` (one for each of `parts`, same order) in place of its own.
+    pub fn evaluator<'a>(&'a self, values: &'a [PartValue]) -> Evaluator<'a> {
+        Evaluator { circuit: self, values }
+    }
+}
+
+impl Evaluator<'_> {
+    /// Load voltage over source EMF.
+    pub fn transfer(&self, frequency_hz: f64) -> Complex64 {
+        transfer(self.circuit, self.values, frequency_hz)
+    }
+
+    /// Load voltage with the network over load voltage without it.
+    pub fn insertion(&self, frequency_hz: f64) -> Complex64 {
+        self.transfer(frequency_hz) * self.circuit.wire_loading(frequency_hz)
+    }
+
+    /// Insertion gain in decibels: negative where the network takes away, −∞ in a perfect null.
+    pub fn insertion_db(&self, frequency_hz: f64) -> f64 {
+        10.0 * self.insertion(frequency_hz).norm_sqr().log10()
+    }
+
+    /// Output impedance at the load, source and load included, ohm.
+    pub fn output_impedance(&self, frequency_hz: f64) -> Complex64 {
+        output_impedance(self.circuit, self.values, frequency_hz)
+    }
+
+    /// |insertion|² at each of `frequencies_hz`, into `out`: several times faster
+    /// than one call each, and without the logarithm.
+    ///
+    /// # Panics
+    /// When the two lengths differ.
+    pub fn insertion_power_each(&self, frequencies_hz: &[f64], out: &mut [f64]) {
+        assert_eq!(frequencies_hz.len(), out.len(), "one place for each frequency");
+        for (some, out) in frequencies_hz.chunks(LANES).zip(out.chunks_mut(LANES)) {
+            // A short last chunk is filled up with its own last frequency.
+            let padded = std::array::from_fn(|lane| some[lane.min(some.len() - 1)]);
+            let power = self.insertion_power::<LANES>(&padded);
+            out.copy_from_slice(&power[..some.len()]);
+        }
+    }
+
+    /// Insertion gain in decibels at each of `frequencies_hz`, into `out`.
+    ///
+    /// # Panics
+    /// When the two lengths differ.
+    pub fn insertion_db_each(&self, frequencies_hz: &[f64], out: &mut [f64]) {
+        self.insertion_power_each(frequencies_hz, out);
+        out.iter_mut().for_each(|power| *power = 10.0 * power.log10());
+    }
+
+    fn insertion_power<const N: usize>(&self, frequencies_hz: &[f64; N]) -> [f64; N] {
+        let omega = frequencies_hz.map(|hz| TAU * hz);
+        let (d, loading) = walk_to_source(self.circuit, self.values, &omega);
+        let (source, load) =
+            (source_lanes(&self.circuit.source, &omega), load_lanes(&self.circuit.load, &omega));
+        let wire = Lanes::ONE + source * load;
+        let power = |z: &Lanes<N>, k: usize| z.re[k] * z.re[k] + z.im[k] * z.im[k];
+        std::array::from_fn(|k| {
+            if is_sound(loading.re[k], loading.im[k]) {
+                power(&d, k) * power(&wire, k) / power(&loading, k)
+            } else {
+                self.insertion(frequencies_hz[k]).norm_sqr()
+            }
+        })
+    }
+}
+
+/// Load voltage over source EMF of a circuit with these values.
+pub(super) fn transfer<V: Values + ?Sized>(circuit: &Circuit, values: &V, frequency_hz: f64) -> Complex64 {
+    let (d, loading) = walk_to_source(circuit, values, &[TAU * frequency_hz]);
+    if is_sound(loading.re[0], loading.im[0]) {
+        return lane(&d) / lane(&loading);
+    }
+    limit(frequency_hz, |omega| {
+        let chain = chain_with(circuit, values, omega);
+        (chain.d, circuit.loading(&chain, omega))
+    })
+}
+
+/// (M₁₂ + Zs·M₂₂)/(M₁₁ + M₁₂Yl + Zs(M₂₁ + M₂₂Yl)): what the load's terminals look
+/// back into, the load itself included.
+pub(super) fn output_impedance<V: Values + ?Sized>(
+    circuit: &Circuit,
+    values: &V,
+    frequency_hz: f64,
+) -> Complex64 {
+    let omega = [TAU * frequency_hz];
+    let source = source_lanes(&circuit.source, &omega);
+    let start = [(Lanes::ONE, load_lanes(&circuit.load, &omega)), (Lanes::ZERO, Lanes::ONE)];
+    let mut walk = Walk::<1, 2>::from_load(start);
+    circuit.ports().rev().for_each(|port| walk.back_through(port, values, &omega));
+    let (loading, open) = (walk.at_source(0, source), walk.at_source(1, source));
+    if is_sound(loading.re[0], loading.im[0]) {
+        return lane(&open) / lane(&loading);
+    }
+    limit(frequency_hz, |omega| {
+        let chain = chain_with(circuit, values, omega);
+        let open = chain.m[0][1] + circuit.source.impedance(omega) * chain.m[1][1];
+        (open, circuit.loading(&chain, omega))
+    })
+}
+
+/// Chain matrix of all sections with these values.
+pub(super) fn chain_with<V: Values + ?Sized>(circuit: &Circuit, values: &V, omega: f64) -> Chain {
+    chain_of(circuit.ports(), values, omega)
+}
+
+/// d and M₁₁ + M₁₂Yl + Zs(M₂₁ + M₂₂Yl), by walking from the load to the source.
+fn walk_to_source<V: Values + ?Sized, const N: usize>(
+    circuit: &Circuit,
+    values: &V,
+    omega: &[f64; N],
+) -> (Lanes<N>, Lanes<N>) {
+    let mut walk = Walk::<N, 1>::from_load([(Lanes::ONE, load_lanes(&circuit.load, omega))]);
+    circuit.ports().rev().for_each(|port| walk.back_through(port, values, omega));
+    let loading = walk.at_source(0, source_lanes(&circuit.source, omega));
+    (walk.d, loading)
+}
+
+fn source_lanes<const N: usize>(source: &Source, omega: &[f64; N]) -> Lanes<N> {
+    Lanes::linear(source.resistance_ohm, source.inductance_h, omega)
+}
+
+fn load_lanes<const N: usize>(load: &Load, omega: &[f64; N]) -> Lanes<N> {
+    Lanes::linear(1.0 / load.resistance_ohm, load.capacitance_f, omega)
+}
+
+fn lane(lanes: &Lanes<1>) -> Complex64 {
+    Complex64::new(lanes.re[0], lanes.im[0])
+}
+
+/// The quotient of `fraction` at `frequency_hz`; where that is 0/0 (capacitors
+/// with nothing but capacitors between them at DC, two lossless traps on one
+/// frequency), its limit: from just above DC, or the mean from both sides.
+fn limit(frequency_hz: f64, fraction: impl Fn(f64) -> (Complex64, Complex64)) -> Complex64 {
+    let omega = TAU * frequency_hz;
+    let quotient = |omega| {
+        let (numerator, denominator) = fraction(omega);
+        numerator / denominator
+    };
+    let (numerator, denominator) = fraction(omega);
+    if !(is_zero(denominator) && is_zero(numerator)) {
+        return numerator / denominator;
+    }
+    if omega == 0.0 {
+        return Complex64::new(quotient(NEAR_DC_RAD_S).re, 0.0);
+    }
+    (quotient(omega * (1.0 + NUDGE)) + quotient(omega * (1.0 - NUDGE))) / 2.0
+}

@@ -1,0 +1,345 @@
+//! YAML in and out: the one place that knows the YAML crate.
+//!
+//! An error names the file, the line, the key, what was read and what would do.
+
+use std::fmt;
+use std::path::{Path, PathBuf};
+
+use serde::de::{DeserializeOwned, DeserializeSeed, Deserializer, IgnoredAny, MapAccess, SeqAccess, Visitor};
+use serde::{Serialize, de};
+
+/// Why a file was not what it should be.
+#[derive(Debug, Clone, PartialEq, thiserror::Error)]
+#[error("{}", self.sentence())]
+pub struct YamlError {
+    /// The file.
+    pub file: PathBuf,
+    /// Line in the file, 1 first, where known.
+    pub line: Option<usize>,
+    /// Key, as in `keep[0].to`; empty for the file as a whole.
+    pub key: String,
+    /// What was read, what was wanted, what to do.
+    pub problem: String,
+}
+
+impl YamlError {
+    /// An error about what stands at `key` (as in `keep[0].to`) of `text`.
+    /// Where that key is absent, the line is that of the nearest thing around it.
+    pub fn at(file: &Path, text: &str, key: &str, problem: impl Into<String>) -> Self {
+        let (file, line) = (file.to_owned(), line_of(text, key));
+        Self { file, line, key: key.to_owned(), problem: problem.into() }
+    }
+
+    fn sentence(&self) -> String {
+        let mut sentence = self.file.display().to_string();
+        if let Some(line) = self.line {
+            sentence += &format!(", line {line}");
+        }
+        if !self.key.is_empty() {
+            sentence += &format!(", key `{}`", self.key);
+        }
+        format!("{sentence}: {}", self.problem)
+    }
+}
+
+/// Reads `text`, the contents of `file`.
+///
+/// # Errors
+/// [`YamlError`] when it is no YAML, or not of the shape of `T`.
+pub fn read<T: DeserializeOwned>(file: &Path, text: &str) -> Result<T, YamlError> {
+    read_with_examples(file, text, &[])
+}
+
+/// As [`read`]; where a key of `examples` is missing, the message shows how to write it.
+///
+/// # Errors
+/// [`YamlError`] when it is no YAML, or not of the shape of `T`.
+pub fn read_with_examples<T: DeserializeOwned>(
+    file: &Path,
+    text: &str,
+    examples: &[(&str, &str)],
+) -> Result<T, YamlError> {
+    let text = text.strip_prefix('\u{feff}').unwrap_or(text);
+    if text.lines().all(|line| line.trim().is_empty() || line.trim_start().starts_with('#')) {
+        let problem = "the file holds no keys; is it the right file, and whole?".to_owned();
+        return Err(YamlError { file: file.to_owned(), line: None, key: String::new(), problem });
+    }
+    serde_yaml::from_str(text).map_err(|error| explain(file, text, examples, &error))
+}
+
+/// Text of `value`.
+///
+/// # Errors
+/// [`YamlError`] when the value has no form in YAML.
+pub fn write<T: Serialize>(file: &Path, value: &T) -> Result<String, YamlError> {
+    serde_yaml::to_string(value).map_err(|error| {
+        let problem = format!("cannot be written as YAML: {error}");
+        YamlError { file: file.to_owned(), line: None, key: String::new(), problem }
+    })
+}
+
+/// Turns the crate's error into ours.
+fn explain(file: &Path, text: &str, examples: &[(&str, &str)], error: &serde_yaml::Error) -> YamlError {
+    let location = error.location();
+    let whole = error.to_string();
+    let place = location.as_ref().map(|at| format!(" at line {} column {}", at.line(), at.column()));
+    let said = place.as_deref().and_then(|place| whole.strip_suffix(place)).unwrap_or(&whole);
+    let (parent, said) = split_key(said);
+    let mut key = parent.to_owned();
+    let mut line = location.as_ref().map(serde_yaml::Location::line);
+    let mut problem =
+        match said.split_once(" field `").and_then(|(what, rest)| Some((what, rest.split_once('`')?))) {
+            Some(("unknown", (name, rest))) => {
+                key = joined(parent, name);
+                unknown_key(name, rest)
+            }
+            Some(("missing", (name, _))) => {
+                key = joined(parent, name);
+                missing_key(&key, examples)
+            }
+            Some(("duplicate", (name, _))) => {
+                key = joined(parent, name);
+                line = line_of_nth(text, &key, 1).or(line);
+                "stands there twice; keep one of the two".to_owned()
+            }
+            _ => wrong_type(said),
+        };
+    if let Some(pointed) = location.as_ref().and_then(|at| pointed_number(text, at.index())) {
+        problem += &format!("; a comma separates keys here, write a decimal point: `{pointed}`");
+    }
+    YamlError { file: file.to_owned(), line, key, problem }
+}
+
+/// The key path that the crate puts before its message, and the message.
+fn split_key(said: &str) -> (&str, &str) {
+    match said.split_once(": ") {
+        Some((key, rest)) if !key.is_empty() && !key.contains([' ', '`']) => (key, rest),
+        _ => ("", said),
+    }
+}
+
+fn joined(parent: &str, name: &str) -> String {
+    if parent.is_empty() { name.to_owned() } else { format!("{parent}.{name}") }
+}
+
+fn missing_key(key: &str, examples: &[(&str, &str)]) -> String {
+    let plain: String =
+        key.split('[').map(|piece| piece.split_once(']').map_or(piece, |(_, rest)| rest)).collect();
+    match examples.iter().find(|(known, _)| *known == plain) {
+        Some((_, example)) => format!("is missing; add for instance `{example}`"),
+        None => "is missing; add it".to_owned(),
+    }
+}
+
+fn unknown_key(name: &str, rest: &str) -> String {
+    let known: Vec<&str> = rest.split('`').skip(1).step_by(2).collect();
+    let nearest = known
+        .iter()
+        .map(|key| (strsim::damerau_levenshtein(&name.to_lowercase(), key), *key))
+        .min()
+        .filter(|(distance, key)| *distance <= 1 + key.len() / 3);
+    let list = known.iter().map(|key| format!("`{key}`")).collect::<Vec<_>>().join(", ");
+    match nearest {
+        Some((_, key)) => format!("is not a key here; did you mean `{key}`? (keys here: {list})"),
+        None => format!("is not a key here; keys here: {list}"),
+    }
+}
+
+/// Says "read …; wanted …" of a value of the wrong type.
+fn wrong_type(said: &str) -> String {
+    let invalid = said.strip_prefix("invalid type: ").or_else(|| said.strip_prefix("invalid value: "));
+    match invalid.and_then(|rest| rest.split_once(", expected ")) {
+        Some((read, wanted)) => {
+            let read = if read == "unit value" { "nothing" } else { read };
+            format!("read {read}; wanted {wanted}")
+        }
+        None => said.to_owned(),
+    }
+}
+
+/// In `{ loss: 0,5 dB }` the comma ends the value `0`: the number meant, with its point.
+fn pointed_number(text: &str, start: usize) -> Option<String> {
+    let rest = &text.get(start..)?;
+    let unsigned = rest.strip_prefix('-').unwrap_or(rest);
+    let whole = unsigned.find(|c: char| !c.is_ascii_digit())?;
+    let decimals = unsigned[whole..].strip_prefix(',')?;
+    let end = decimals.find([',', '}', ']', '\n', '#']).unwrap_or(decimals.len());
+    let starts_with_digit = decimals.starts_with(|c: char| c.is_ascii_digit());
+    let signed = if rest.starts_with('-') { "-" } else { "" };
+    (whole > 0 && starts_with_digit)
+        .then(|| format!("{signed}{}.{}", &unsigned[..whole], decimals[..end].trim_end()))
+}
+
+/// Line of the value at `key`, as in `keep[0].to`; of what is around it when absent.
+pub fn line_of(text: &str, key: &str) -> Option<usize> {
+    line_of_nth(text, key, 0)
+}
+
+/// As [`line_of`], past `skip` earlier values of the same key.
+fn line_of_nth(text: &str, key: &str, skip: usize) -> Option<usize> {
+    let steps: Vec<Step<'_>> = key.split('.').flat_map(steps_of).collect();
+    let seek = Seek { steps: &steps, skip };
+    let found = seek.deserialize(serde_yaml::Deserializer::from_str(text));
+    found.err()?.location().map(|at| at.line())
+}
+
+/// One step from a value into one it holds.
+enum Step<'a> {
+    Key(&'a str),
+    Index(usize),
+}
+
+/// `keep[0]` is a key, then an index.
+fn steps_of(piece: &str) -> impl Iterator<Item = Step<'_>> {
+    let mut parts = piece.split('[');
+    let name = parts.next().filter(|name| !name.is_empty()).map(Step::Key);
+    name.into_iter().chain(parts.filter_map(|part| part.trim_end_matches(']').parse().ok().map(Step::Index)))
+}
+
+/// Walks to a value and fails there on purpose: the crate tells the place of
+/// an error, and of nothing else.
+struct Seek<'a> {
+    steps: &'a [Step<'a>],
+    /// How many values of the last key to pass by.
+    skip: usize,
+}
+
+impl<'de> DeserializeSeed<'de> for Seek<'_> {
+    type Value = ();
+
+    fn deserialize<D: Deserializer<'de>>(self, deserializer: D) -> Result<(), D::Error> {
+        deserializer.deserialize_any(self)
+    }
+}
+
+impl<'de> Visitor<'de> for Seek<'_> {
+    type Value = ();
+
+    fn expecting(&self, out: &mut fmt::Formatter<'_>) -> fmt::Result {
+        out.write_str("the place sought")
+    }
+
+    fn visit_map<A: MapAccess<'de>>(self, mut map: A) -> Result<(), A::Error> {
+        if let Some((Step::Key(name), steps)) = self.steps.split_first() {
+            let mut pass_by = if steps.is_empty() { self.skip } else { 0 };
+            while let Some(key) = map.next_key::<String>()? {
+                if key == *name && pass_by == 0 {
+                    return map.next_value_seed(Seek { steps, skip: self.skip });
+                }
+                pass_by -= usize::from(key == *name);
+                map.next_value::<IgnoredAny>()?;
+            }
+        }
+        Err(de::Error::custom("here"))
+    }
+
+    fn visit_seq<A: SeqAccess<'de>>(self, mut items: A) -> Result<(), A::Error> {
+        if let Some((Step::Index(index), steps)) = self.steps.split_first() {
+            for _ in 0..*index {
+                if items.next_element::<IgnoredAny>()?.is_none() {
+                    break;
+                }
+            }
+            if items.next_element_seed(Seek { steps, skip: self.skip })?.is_some() {
+                return Ok(());
+            }
+        }
+        Err(de::Error::custom("here"))
+    }
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+    use crate::parts::quantity::Hertz;
+    use serde::Deserialize;
+
+    #[derive(Debug, Deserialize)]
+    #[serde(deny_unknown_fields)]
+    #[allow(dead_code)]
+    struct Outer {
+        name: String,
+        bands: Vec<Band>,
+    }
+
+    #[derive(Debug, Deserialize)]
+    #[serde(deny_unknown_fields)]
+    #[allow(dead_code)]
+    struct Band {
+        from: Hertz,
+        upto: Hertz,
+    }
+
+    fn error(text: &str) -> YamlError {
+        read_with_examples::<Outer>(Path::new("a.yaml"), text, &[("bands.upto", "upto: 12 Hz")])
+            .expect_err("not of this shape")
+    }
+
+    #[test]
+    fn a_value_without_unit_is_placed_to_its_line_and_key() {
+        let error = error("name: x\nbands:\n  - from: 1 Hz\n    upto: 12\n");
+        assert_eq!((error.line, error.key.as_str()), (Some(4), "bands[0].upto"));
+        assert_eq!(
+            error.to_string(),
+            "a.yaml, line 4, key `bands[0].upto`: read `12`, which has no unit; wanted a frequency with its unit, \
+             such as `12 Hz`"
+        );
+    }
+
+    #[test]
+    fn a_misspelt_key_names_the_nearest() {
+        let error = error("name: x\nbands:\n  - from: 1 Hz\n    uptoo: 12 Hz\n");
+        assert_eq!((error.line, error.key.as_str()), (Some(4), "bands[0].uptoo"));
+        assert!(error.problem.contains("did you mean `upto`?"), "{error}");
+    }
+
+    #[test]
+    fn a_missing_key_shows_how_to_write_it() {
+        let error = error("name: x\nbands:\n  - { from: 1 Hz }\n");
+        assert_eq!((error.line, error.key.as_str()), (Some(3), "bands[0].upto"));
+        assert!(error.problem.contains("`upto: 12 Hz`"), "{error}");
+    }
+
+    #[test]
+    fn a_key_twice_is_an_error() {
+        let error = error("name: x\nname: y\nbands: []\n");
+        assert_eq!((error.line, error.key.as_str()), (Some(2), "name"));
+        assert!(error.problem.contains("twice"), "{error}");
+    }
+
+    #[test]
+    fn a_decimal_comma_within_braces_gets_its_hint() {
+        let error = error("name: x\nbands:\n  - { from: 0,5 Hz, upto: 12 Hz }\n");
+        assert_eq!(error.line, Some(3));
+        assert!(error.problem.contains("write a decimal point: `0.5 Hz`"), "{error}");
+    }
+
+    #[test]
+    fn a_value_of_the_wrong_shape_is_told() {
+        assert!(error("name: x\nbands: 3\n").problem.contains("read integer `3`; wanted a sequence"));
+        assert!(error("name: [a]\nbands: []\n").problem.contains("read sequence; wanted a string"));
+    }
+
+    #[test]
+    fn broken_yaml_keeps_its_line() {
+        let error = error("name: x\nbands: [1, 2\nmore: 3\n");
+        assert!(error.line.is_some_and(|line| line >= 2), "{error}");
+    }
+
+    #[test]
+    fn an_empty_file_is_said_to_be() {
+        for text in ["", "\n# only words\n"] {
+            assert!(error(text).to_string().contains("holds no keys"), "{text:?}");
+        }
+    }
+
+    #[test]
+    fn lines_are_found_by_key() {
+        let text = "name: x\nbands:\n  - from: 1 Hz\n    upto: 2 Hz\n  - { from: 3 Hz,\n      upto: 4 Hz }\n";
+        let cases =
+            [("name", 1), ("bands", 3), ("bands[0].upto", 4), ("bands[1].upto", 6), ("bands[1].gone", 5)];
+        for (key, line) in cases {
+            assert_eq!(line_of(text, key), Some(line), "{key}");
+        }
+    }
+}
