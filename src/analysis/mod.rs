@@ -1,13 +1,24 @@
 //! What hums: fundamental, harmonics, frequency track, spread, supplies, cause.
 
+mod analyse;
+mod causes;
+mod comb;
 mod decimator;
 mod findings;
+mod folding;
+mod kalman;
 mod orders;
 mod phase;
 mod phasors;
 mod spectrum;
+mod spread;
+mod supplies;
+mod survey;
+mod tracker;
+mod verdict;
 mod window;
 
+pub use analyse::{AnalysisRun, analyse};
 pub use findings::*;
 pub use orders::{OrderLevel, OrderMeter};
 pub use phase::PhaseTrack;
@@ -28,4 +39,19 @@ pub enum AnalysisError {
     /// Reading failed.
     #[error(transparent)]
     Capture(#[from] crate::capture::CaptureError),
+    /// A channel was asked for that the recording does not have.
+    #[error(
+        "{name}: channel {wanted} was asked for, the recording has {channels}; give a number from 1 to {channels}"
+    )]
+    NoSuchChannel {
+        /// The recording.
+        name: String,
+        /// The channel asked for, 1 first.
+        wanted: usize,
+        /// Channels in the recording.
+        channels: usize,
+    },
+    /// Nothing was given to analyse.
+    #[error("no capture was given; at least one recording is needed")]
+    NoCapture,
 }

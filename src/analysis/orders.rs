@@ -22,6 +22,11 @@ pub struct OrderLevel {
     pub frequency_hz: f64,
     /// RMS relative to the RMS of a full-scale sine (AES17).
     pub level_dbfs: f64,
+    /// Mean of the line's power over time, each stretch of some seconds taken on its
+    /// own and the noise taken out; same reference. It stands over the level where
+    /// amplitude or phase (against the track) change from stretch to stretch, as
+    /// behind a notch that a wandering line crosses.
+    pub mean_power_dbfs: f64,
     /// Standard error of the level in decibels, from the noise around the line.
     pub level_se_db: f64,
     /// Phase of the cosine at the start of the capture, degrees from −180 to 180.
@@ -85,8 +90,9 @@ impl OrderMeter {
         let blocks = self.bank.finish();
         self.take(blocks);
         let densities = self.noise.densities();
-        let orders = self.orders.iter().zip(&self.sums).zip(densities);
-        orders.map(|((&order, &sum), density)| self.level(order, sum, density)).collect()
+        let powers = self.noise.line_powers(&densities);
+        let orders = self.orders.iter().zip(&self.sums).zip(densities).zip(powers);
+        orders.map(|(((&order, &sum), density), power)| self.level(order, sum, density, power)).collect()
     }
 
     fn take(&mut self, blocks: Vec<BlockPhasors>) {
@@ -102,7 +108,7 @@ impl OrderMeter {
         }
     }
 
-    fn level(&self, order: u32, sum: Complex64, density: f64) -> OrderLevel {
+    fn level(&self, order: u32, sum: Complex64, density: f64, mean_power: f64) -> OrderLevel {
         let k = f64::from(order);
         let phasor = if self.weight > 0.0 { sum / self.weight } else { Complex64::ZERO };
         let start = k * self.track.phase_at(0.0);
@@ -115,6 +121,7 @@ impl OrderMeter {
             order,
             frequency_hz: k * self.track.mean_frequency_hz(),
             level_dbfs: power_dbfs(power),
+            mean_power_dbfs: power_dbfs(mean_power),
             level_se_db: if relative.is_finite() { (relative * 20.0 / 10f64.ln()).min(99.0) } else { 99.0 },
             phase_deg: wrapped_degrees(phasor.arg() + start.rem_euclid(TAU)),
             over_floor_db: power_db(power / floor.max(1e-40)).min(400.0),
@@ -133,9 +140,10 @@ pub(super) fn power_db(ratio: f64) -> f64 {
     10.0 * ratio.max(1e-40).log10()
 }
 
-/// Time between blocks: three cycles, but at least some twenty blocks.
+/// Time between blocks: two cycles, so that the main lobe reaches half-way to the
+/// next harmonic, but at least some twenty blocks.
 pub(super) fn block_hop_s(fundamental_hz: f64, duration_s: f64) -> f64 {
-    (3.0 / fundamental_hz).min(duration_s / 20.0)
+    (2.0 / fundamental_hz).min(duration_s / 20.0)
 }
 
 /// Weights that rise and fall smoothly over the blocks of a capture.
@@ -173,6 +181,8 @@ pub(super) struct NoiseBeside {
     bins: Vec<i32>,
     gathered: Vec<Vec<Complex64>>,
     power: Vec<Vec<f64>>,
+    /// Squared amplitude of each line itself, summed over the stretches.
+    line_power: Vec<f64>,
     stretches: usize,
 }
 
@@ -187,7 +197,17 @@ impl NoiseBeside {
         let bins: Vec<i32> = (-outer..=outer).filter(|m| m.abs() >= inner).collect();
         let power = vec![vec![0.0; bins.len()]; lines];
         let gathered = vec![Vec::with_capacity(stretch); lines];
-        Self { stretch, window, window_power, hop_s, bins, gathered, power, stretches: 0 }
+        Self {
+            stretch,
+            window,
+            window_power,
+            hop_s,
+            bins,
+            gathered,
+            power,
+            line_power: vec![0.0; lines],
+            stretches: 0,
+        }
     }
 
     /// Takes one block's phasors.
@@ -203,6 +223,12 @@ impl NoiseBeside {
     fn close_stretch(&mut self) {
         let n = self.stretch as f64;
         let turns: Vec<Complex64> = (0..self.stretch).map(|i| Complex64::cis(-TAU * i as f64 / n)).collect();
+        let weight: f64 = self.window.iter().sum();
+        for (line, sum) in self.gathered.iter().zip(&mut self.line_power) {
+            let amplitude =
+                line.iter().zip(&self.window).map(|(value, w)| w * value).sum::<Complex64>() / weight;
+            *sum += amplitude.norm_sqr();
+        }
         for (line, power) in self.gathered.iter_mut().zip(&mut self.power) {
             for (slot, &m) in power.iter_mut().zip(&self.bins) {
                 let mut sum = Complex64::ZERO;
@@ -220,6 +246,15 @@ impl NoiseBeside {
     /// One-sided density at each line: mean square per hertz.
     pub fn densities(&self) -> Vec<f64> {
         self.power.iter().map(|power| self.density(power)).collect()
+    }
+
+    /// Mean power of each line itself, less the noise that the stretch's window lets in.
+    fn line_powers(&self, densities: &[f64]) -> Vec<f64> {
+        let weight: f64 = self.window.iter().sum();
+        let bandwidth_hz = self.window_power / (weight * weight * self.hop_s);
+        let mean = |sum: &f64| 0.5 * sum / self.stretches.max(1) as f64;
+        let lines = self.line_power.iter().zip(densities);
+        lines.map(|(sum, density)| (mean(sum) - density * bandwidth_hz).max(0.0)).collect()
     }
 
     fn density(&self, power: &[f64]) -> f64 {

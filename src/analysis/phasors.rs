@@ -31,7 +31,6 @@ const BATCH: usize = 32;
 #[derive(Debug, Clone)]
 pub(super) struct BlockPhasors {
     /// Middle of the block in seconds from the start.
-    #[allow(dead_code)]
     pub time_s: f64,
     /// Aₖ e^(jθₖ) for each order, relative to the reference phase.
     pub values: Vec<Complex64>,

@@ -104,6 +104,16 @@ impl<P> Branch<P> {
         })
     }
 
+    /// Whether a list in it is empty where a part was expected.
+    pub(super) fn has_gaps(&self) -> bool {
+        match self {
+            Self::Part(_) => false,
+            Self::Series { series: inner } | Self::Parallel { parallel: inner } => {
+                inner.is_empty() || inner.iter().any(Self::has_gaps)
+            }
+        }
+    }
+
     /// The parts, from the input side on.
     pub fn parts(&self) -> Vec<&P> {
         match self {

@@ -112,6 +112,17 @@ impl<P> TwoPort<P> {
         })
     }
 
+    /// Whether a list in it is empty where a part was expected.
+    pub(super) fn has_gaps(&self) -> bool {
+        match self {
+            Self::Series { series: branch } | Self::Shunt { shunt: branch } => branch.has_gaps(),
+            Self::Beside { beside } => {
+                let gap = |chain: &Vec<Self>| chain.is_empty() || chain.iter().any(Self::has_gaps);
+                beside.is_empty() || beside.iter().any(gap)
+            }
+        }
+    }
+
     /// The parts, from the input side on.
     pub fn parts(&self) -> Vec<&P> {
         match self {

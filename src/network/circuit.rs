@@ -1,5 +1,6 @@
 //! A whole circuit: source, sections, load, and the parts they are made of.
 
+use std::collections::HashMap;
 use std::f64::consts::TAU;
 
 use num_complex::Complex64;
@@ -62,6 +63,38 @@ pub enum NetworkError {
     UnknownPart {
         /// The name.
         reference: String,
+    },
+    /// Two parts of one name.
+    #[error("two parts are named `{reference}`; each part needs a name of its own: rename one")]
+    SharedName {
+        /// The name.
+        reference: String,
+    },
+    /// A part at two places.
+    #[error(
+        "the network uses the part `{reference}` at two places; each place needs a part of its own in `parts`"
+    )]
+    UsedTwice {
+        /// The name.
+        reference: String,
+    },
+    /// Nothing where a part was expected.
+    #[error(
+        "section `{kind}` of the network holds an empty `series`, `parallel` or `beside` list; name at least one part in it or leave it out"
+    )]
+    Empty {
+        /// Kind of the section.
+        kind: String,
+    },
+    /// A number that no passive part has.
+    #[error(
+        "`{reference}` has a value, resistance or capacitance of {value}; expected a number in ohm, farad or henry that is not negative, and above zero for the load's resistance"
+    )]
+    NotPassive {
+        /// The part, `source` or `load`.
+        reference: String,
+        /// What was read.
+        value: f64,
     },
 }
 
@@ -148,16 +181,60 @@ impl TryFrom<CircuitRecord> for Circuit {
     type Error = NetworkError;
 
     fn try_from(record: CircuitRecord) -> Result<Self, NetworkError> {
+        check_numbers(&record)?;
+        let mut names = HashMap::new();
+        for (index, part) in record.parts.iter().enumerate() {
+            if names.insert(part.reference.as_str(), index).is_some() {
+                return Err(NetworkError::SharedName { reference: part.reference.clone() });
+            }
+        }
+        let mut used = vec![false; record.parts.len()];
         let mut index = |reference: &String| {
-            let found = record.parts.iter().position(|part| part.reference == *reference);
-            found.ok_or_else(|| NetworkError::UnknownPart { reference: reference.clone() })
+            let found = names.get(reference.as_str()).copied();
+            let found = found.ok_or_else(|| NetworkError::UnknownPart { reference: reference.clone() })?;
+            if std::mem::replace(&mut used[found], true) {
+                return Err(NetworkError::UsedTwice { reference: reference.clone() });
+            }
+            Ok(found)
         };
         let sections = record
             .network
             .iter()
-            .map(|section| map_section(section, &mut index))
+            .map(|section| {
+                if section.stages.iter().any(TwoPort::has_gaps) {
+                    return Err(NetworkError::Empty { kind: section.kind.clone() });
+                }
+                map_section(section, &mut index)
+            })
             .collect::<Result<_, _>>()?;
         Ok(Self { source: record.source, load: record.load, sections, parts: record.parts })
+    }
+}
+
+/// Refuses numbers that no passive circuit has; a load may be infinite, not zero.
+fn check_numbers(record: &CircuitRecord) -> Result<(), NetworkError> {
+    let (source, load) = (&record.source, &record.load);
+    // A short circuit has no load voltage to speak of; an open end is allowed.
+    if load.resistance_ohm.is_nan() || load.resistance_ohm <= 0.0 {
+        return Err(NetworkError::NotPassive { reference: "load".to_owned(), value: load.resistance_ohm });
+    }
+    let mut numbers = vec![
+        ("source", source.resistance_ohm),
+        ("source", source.inductance_h),
+        ("load", load.capacitance_f),
+    ];
+    for part in &record.parts {
+        let own = [
+            part.value_si,
+            part.series_resistance_ohm,
+            part.self_capacitance_f,
+            part.setting_ohm.unwrap_or_default(),
+        ];
+        numbers.extend(own.map(|number| (part.reference.as_str(), number)));
+    }
+    match numbers.into_iter().find(|(_, number)| !(number.is_finite() && *number >= 0.0)) {
+        None => Ok(()),
+        Some((reference, value)) => Err(NetworkError::NotPassive { reference: reference.to_owned(), value }),
     }
 }
 
@@ -167,4 +244,47 @@ fn map_section<P, Q, E>(
 ) -> Result<Section<Q>, E> {
     let stages = section.stages.iter().map(|stage| stage.try_map(name)).collect::<Result<_, E>>()?;
     Ok(Section { kind: section.kind.clone(), stages })
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+
+    const LINE: &str = "
+source: { resistance_ohm: 350 }
+load: { resistance_ohm: 1e6 }
+network: [{ kind: shunt trap, stages: [{ series: R1 }, { shunt: { series: [C1] } }] }]
+parts:
+  - { ref: R1, kind: resistor, value: 1 kΩ, value_si: 1000, tolerance_pct: 1 }
+  - { ref: C1, kind: capacitor, value: 1 µF, value_si: 1e-6, tolerance_pct: 5 }
+";
+
+    fn read(changed: (&str, &str)) -> Result<Circuit, String> {
+        let text = LINE.replacen(changed.0, changed.1, 1);
+        assert!(text != LINE || changed.0.is_empty(), "the change is made");
+        serde_yaml::from_str(&text).map_err(|error| error.to_string())
+    }
+
+    #[test]
+    fn a_circuit_is_read_with_its_parts_by_name() {
+        let circuit = read(("", "")).expect("it is right");
+        assert_eq!(circuit.sections[0].stages[1].parts(), [&1]);
+    }
+
+    #[test]
+    fn a_circuit_that_is_none_is_refused_with_the_name_of_the_part() {
+        for (changed, told) in [
+            (("shunt: { series: [C1] }", "shunt: C7"), "`C7`, which its parts list does not hold"),
+            (("shunt: { series: [C1] }", "shunt: R1"), "the part `R1` at two places"),
+            (("shunt: { series: [C1] }", "shunt: { series: [] }"), "section `shunt trap`"),
+            (("shunt: { series: [C1] }", "beside: [[]]"), "section `shunt trap`"),
+            (("ref: C1", "ref: R1"), "two parts are named `R1`"),
+            (("value_si: 1e-6", "value_si: -1e-6"), "`C1` has a value"),
+            (("value_si: 1e-6", "value_si: .nan"), "`C1` has a value"),
+            (("resistance_ohm: 1e6", "resistance_ohm: 0"), "`load` has a value"),
+        ] {
+            let error = read(changed).expect_err(told);
+            assert!(error.contains(told), "{error}");
+        }
+    }
 }

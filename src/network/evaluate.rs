@@ -15,7 +15,7 @@ const LANES: usize = 4;
 
 /// Angular frequency that stands for DC where DC itself gives 0/0: low enough
 /// that every network of real parts has reached its limit (ωτ < 1e-8 at τ = 1e4 s).
-const NEAR_DC_RAD_S: f64 = 1e-12;
+pub(super) const NEAR_DC_RAD_S: f64 = 1e-12;
 
 /// Relative distance from a frequency at which a lossless network gives 0/0.
 const NUDGE: f64 = 1.0 / (1u32 << 30) as f64;
@@ -208,4 +208,103 @@ fn limit(frequency_hz: f64, fraction: impl Fn(f64) -> (Complex64, Complex64)) ->
         return Complex64::new(quotient(NEAR_DC_RAD_S).re, 0.0);
     }
     (quotient(omega * (1.0 + NUDGE)) + quotient(omega * (1.0 - NUDGE))) / 2.0
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+    use crate::network::{Branch, Section, TwoPort};
+    use crate::parts::{Part, PartKind};
+
+    fn circuit(stages: Vec<TwoPort>, parts: Vec<Part>) -> Circuit {
+        Circuit {
+            source: Source { resistance_ohm: 100.0, inductance_h: 0.0 },
+            load: Load { resistance_ohm: 900.0, capacitance_f: 0.0 },
+            sections: vec![Section { kind: "test".to_owned(), stages }],
+            parts,
+        }
+    }
+
+    fn series(branch: Branch) -> TwoPort {
+        TwoPort::Series { series: branch }
+    }
+
+    fn shunt(branch: Branch) -> TwoPort {
+        TwoPort::Shunt { shunt: branch }
+    }
+
+    fn capacitors(count: usize) -> Vec<Part> {
+        (0..count).map(|_| Part::ideal("C", PartKind::Capacitor, 1e-6)).collect()
+    }
+
+    #[test]
+    fn dc_does_not_pass_capacitors_with_a_floating_node_between_them() {
+        let both = Branch::series([Branch::Part(0), Branch::Part(1)]);
+        let ladder = vec![series(Branch::Part(0)), shunt(Branch::Part(1)), series(Branch::Part(2))];
+        for (stages, count) in [
+            (vec![series(both)], 2),
+            (vec![series(Branch::Part(0)), series(Branch::Part(1))], 2),
+            (ladder, 3),
+        ] {
+            let circuit = circuit(stages, capacitors(count));
+            assert!(circuit.transfer(0.0).norm() < 1e-20);
+            assert!((circuit.output_impedance(0.0).re - 900.0).abs() < 1e-9, "the load alone is left");
+        }
+    }
+
+    #[test]
+    fn capacitors_in_series_to_ground_leave_dc_alone() {
+        let both = Branch::series([Branch::Part(0), Branch::Part(1)]);
+        let circuit = circuit(vec![shunt(both)], capacitors(2));
+        assert!((circuit.transfer(0.0) - 0.9).norm() < 1e-15);
+    }
+
+    #[test]
+    fn two_lossless_traps_on_one_frequency_null_it() {
+        // 1/(2π) Hz is resonance to the last digit for 1 H and 1 F.
+        let trap = |first: usize| shunt(Branch::series([Branch::Part(first), Branch::Part(first + 1)]));
+        let pair = [Part::ideal("L", PartKind::Coil, 1.0), Part::ideal("C", PartKind::Capacitor, 1.0)];
+        let circuit = circuit(vec![trap(0), trap(2)], [pair.clone(), pair].concat());
+        let hz = 1.0 / TAU;
+        assert!(circuit.transfer(hz).norm() < 1e-12, "{}", circuit.transfer(hz));
+        assert!(circuit.output_impedance(hz).norm() < 1e-6);
+        let values = circuit.values();
+        let mut power = [f64::NAN; 3];
+        circuit.evaluator(&values).insertion_power_each(&[0.0, hz, 2.0 * hz], &mut power);
+        assert!((power[0] - 1.0).abs() < 1e-12 && power[1] < 1e-24 && power[2] > 1e-6, "{power:?}");
+    }
+
+    #[test]
+    fn a_wire_beside_a_wire_is_a_wire() {
+        let stages = vec![TwoPort::Beside {
+            beside: vec![
+                vec![series(Branch::Part(0))],
+                vec![series(Branch::Part(1)), shunt(Branch::Part(2))],
+            ],
+        }];
+        let mut parts = vec![Part::ideal("L", PartKind::Coil, 1.0); 2];
+        parts.extend(capacitors(1));
+        assert!((circuit(stages, parts).transfer(0.0) - 0.9).norm() < 1e-15);
+    }
+
+    #[test]
+    fn a_ladder_too_long_for_plain_numbers_is_still_exact() {
+        // Sixty times the same attenuator of 1 MΩ to ground: the products leave f64's range.
+        let resistor = |ohm| Part::ideal("R", PartKind::Resistor, ohm);
+        let stages = (0..60).map(|k| shunt(Branch::Part(k))).collect();
+        let circuit = circuit(stages, (0..60).map(|_| resistor(6e6)).collect());
+        let expected = 1.0 / (1.0 + 100.0 * (1.0 / 900.0 + 60.0 / 6e6));
+        assert!((circuit.transfer(50.0) - expected).norm() < 1e-12);
+    }
+
+    #[test]
+    fn a_build_has_the_same_numbers_either_way() {
+        let part = Part {
+            series_resistance_ohm: 45.0,
+            series_resistance_drift_per_k: 0.0039,
+            drift_per_k: 150e-6,
+            ..Part::ideal("L1", PartKind::Coil, 1.0)
+        };
+        assert_eq!(PartValue::as_built(&part, -0.03, 35.0), PartValue::from(&part.as_built(-0.03, 35.0)));
+    }
 }

@@ -9,11 +9,18 @@ mod branch;
 mod chain;
 mod circuit;
 mod evaluate;
+pub mod kinds;
 mod ladder;
+mod netlist;
+mod noise;
+mod stress;
 mod values;
+mod wiring;
 
 pub use branch::{Branch, Fraction, part_impedance};
 pub use chain::{Chain, TwoPort};
 pub use circuit::{Circuit, Load, NetworkError, Section, Source};
 pub use evaluate::Evaluator;
+pub use noise::{BOLTZMANN_J_K, Noise};
+pub use stress::PartStress;
 pub use values::PartValue;

@@ -185,6 +185,14 @@ mod tests {
     }
 
     #[test]
+    fn a_coarser_series_is_part_of_the_finer() {
+        for (coarse, fine) in [(3, 6), (6, 12), (12, 24), (48, 96), (96, 192)] {
+            let fine = Series(fine).hundredths();
+            assert!(Series(coarse).hundredths().iter().all(|value| fine.contains(value)), "E{coarse}");
+        }
+    }
+
+    #[test]
     fn a_range_holds_both_its_ends_and_exact_doubles() {
         let values = Series(12).between(1e-9, 4.7e-6);
         assert_eq!(values.len(), 3 * 12 + 9);

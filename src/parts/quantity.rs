@@ -1,6 +1,6 @@
 //! Quantities with units and SI prefixes: read from text, and printed as one would order a part.
 
-use std::fmt;
+use super::yaml::from_text;
 
 /// What kind of quantity is wanted, and so which units are right.
 #[derive(Debug, Clone, Copy, PartialEq, Eq)]
@@ -220,6 +220,12 @@ impl Unit {
         FACTS.iter().find(|facts| facts.unit == self).expect("the table holds every unit")
     }
 
+    /// What is wanted, for messages: `a frequency with its unit, such as …`.
+    fn wanted(self) -> String {
+        let facts = self.facts();
+        format!("{} with its unit, such as `{}`", facts.name, facts.example)
+    }
+
     /// The symbol printed after a number.
     pub fn symbol(self) -> &'static str {
         self.facts().symbol
@@ -230,6 +236,14 @@ impl Unit {
 /// for levels, a fraction for percentages).
 ///
 /// dBu and dBV become volts RMS: 0.7746·10^(x/20) and 10^(x/20).
+///
+/// ```
+/// use notchwright::parts::{Unit, quantity::parse};
+///
+/// assert_eq!(parse("4.7 kΩ", Unit::Ohm)?, 4700.0);
+/// assert_eq!(parse("2n2", Unit::Farad)?, 2.2e-9);
+/// # Ok::<(), notchwright::parts::QuantityError>(())
+/// ```
 ///
 /// # Errors
 /// [`QuantityError`] when the number or its unit is missing or wrong.
@@ -431,7 +445,8 @@ macro_rules! quantities {
 
         impl<'de> serde::Deserialize<'de> for $name {
             fn deserialize<D: serde::Deserializer<'de>>(deserializer: D) -> Result<Self, D::Error> {
-                deserializer.deserialize_str(QuantityVisitor(Unit::$unit)).map(Self)
+                let unit = Unit::$unit;
+                from_text(deserializer, &unit.wanted(), |text| parse(text, unit)).map(Self)
             }
         }
     )+};
@@ -449,21 +464,6 @@ quantities! {
     Decibels = Decibel, "A level difference in decibel, read from text with its unit.";
     Fraction = Fraction, "A fraction, read from text in percent or ppm.";
     PerKelvin = PerKelvin, "A drift per kelvin, read from text in ppm/K or %/K.";
-}
-
-struct QuantityVisitor(Unit);
-
-impl serde::de::Visitor<'_> for QuantityVisitor {
-    type Value = f64;
-
-    fn expecting(&self, out: &mut fmt::Formatter<'_>) -> fmt::Result {
-        let facts = self.0.facts();
-        write!(out, "{} with its unit, such as `{}`", facts.name, facts.example)
-    }
-
-    fn visit_str<E: serde::de::Error>(self, text: &str) -> Result<f64, E> {
-        parse(text, self.0).map_err(E::custom)
-    }
 }
 
 #[cfg(test)]

@@ -4,15 +4,19 @@ use std::path::Path;
 
 use serde::{Deserialize, Deserializer};
 
-use super::quantity::{Amperes, Farads, Fraction, Henries, Hertz, Ohms, PerKelvin, Volts, Watts};
+use super::quantity::{self, Amperes, Farads, Fraction, Henries, Hertz, Ohms, PerKelvin, Volts, Watts};
 use super::stock::COPPER_DRIFT_PER_K;
 use super::yaml::{self, YamlError};
-use super::{CapacitorLine, CoilLine, PartsError, ResistorLine, Series, Stock, TrimmerLine};
+use super::{CapacitorLine, CoilLine, PartsError, ResistorLine, Series, Stock, TrimmerLine, Unit};
 
 const BUILT_IN: &str = include_str!("built_in.yaml");
 
 /// How to write a key that is missing.
 const EXAMPLES: &[(&str, &str)] = &[
+    ("coils", "- { inductance: 1 H, resistance: 45 Ω, tolerance: 5 % }"),
+    ("capacitors", "- { dielectric: film, series: E12, from: 1 nF, to: 1 µF, tolerance: 5 %, loss: 0.0005 }"),
+    ("resistors", "- { kind: metal film, series: E96, from: 10 Ω, to: 1 MΩ, tolerance: 1 % }"),
+    ("trimmers", "- { kind: cermet multi-turn, values: [100 Ω, 2 kΩ], resolution: 0.5 % }"),
     ("coils.inductance", "inductance: 1 H"),
     ("coils.resistance", "resistance: 45 Ω"),
     ("coils.tolerance", "tolerance: 5 %"),
@@ -104,23 +108,22 @@ struct Loss(f64);
 
 impl<'de> Deserialize<'de> for Loss {
     fn deserialize<D: Deserializer<'de>>(deserializer: D) -> Result<Self, D::Error> {
-        let text = String::deserialize(deserializer)?;
-        let bare = text.trim().parse::<f64>().ok().filter(|loss| loss.is_finite());
-        let percent = || super::quantity::parse(&text, super::Unit::Fraction).ok();
-        bare.or_else(percent).map(Self).ok_or_else(|| {
-            serde::de::Error::custom(format!("read `{text}`; wanted the loss factor tan δ, such as `0.0005`"))
+        let wanted = "the loss factor tan δ, such as `0.0005`";
+        yaml::from_text(deserializer, wanted, |text| {
+            let bare = text.trim().parse::<f64>().ok().filter(|loss| loss.is_finite());
+            let loss = bare.or_else(|| quantity::parse(text, Unit::Fraction).ok());
+            loss.map(Self).ok_or_else(|| format!("read `{text}`; wanted {wanted}"))
         })
     }
 }
 
 impl<'de> Deserialize<'de> for Series {
     fn deserialize<D: Deserializer<'de>>(deserializer: D) -> Result<Self, D::Error> {
-        let text = String::deserialize(deserializer)?;
-        let steps = text.trim().strip_prefix(['E', 'e']).and_then(|steps| steps.parse().ok());
-        steps.filter(|steps| Self::STEPS.contains(steps)).map(Self).ok_or_else(|| {
-            serde::de::Error::custom(format!(
-                "read `{text}`; wanted a series of IEC 60063: E3, E6, E12, E24, E48, E96 or E192"
-            ))
+        let wanted = "a series of IEC 60063: E3, E6, E12, E24, E48, E96 or E192";
+        yaml::from_text(deserializer, wanted, |text| {
+            let steps = text.trim().strip_prefix(['E', 'e']).and_then(|steps| steps.parse().ok());
+            let known = steps.filter(|steps| Self::STEPS.contains(steps));
+            known.map(Self).ok_or_else(|| format!("read `{text}`; wanted {wanted}"))
         })
     }
 }
@@ -139,9 +142,8 @@ impl Stock {
     /// [`PartsError`] when the file cannot be read, or is no stock list, or
     /// holds too little for any filter.
     pub fn read(path: &Path) -> Result<Self, PartsError> {
-        let text = std::fs::read_to_string(path)
-            .map_err(|source| PartsError::Io { path: path.to_owned(), source })?;
-        Ok(Self::from_text(path, &text)?)
+        let bytes = std::fs::read(path).map_err(|source| PartsError::Io { path: path.to_owned(), source })?;
+        Ok(Self::from_text(path, &yaml::decode(path, bytes)?)?)
     }
 
     /// Reads a stock list from `text`, the contents of `path`.
@@ -182,13 +184,25 @@ impl Check<'_> {
 
     fn coil(&self, key: &str, record: CoilRecord) -> Result<CoilLine, YamlError> {
         Ok(CoilLine {
-            inductance_h: self.positive(key, "inductance", record.inductance.0, "1 H")?,
-            resistance_ohm: self.positive(key, "resistance", record.resistance.0, "45 Ω")?,
+            inductance_h: self.positive(key, "inductance", record.inductance.0, Unit::Henry, "1 H")?,
+            resistance_ohm: self.positive(key, "resistance", record.resistance.0, Unit::Ohm, "45 Ω")?,
             tolerance: self.tolerance(key, record.tolerance)?,
             resistance_drift_per_k: record.resistance_drift.map_or(COPPER_DRIFT_PER_K, |drift| drift.0),
             drift_per_k: record.drift.map_or(0.0, |drift| drift.0),
-            current_a: self.limit(key, "current", record.current.map(|limit| limit.0), "20 mA")?,
-            resonance_hz: self.limit(key, "resonance", record.resonance.map(|hz| hz.0), "18 kHz")?,
+            current_a: self.limit(
+                key,
+                "current",
+                record.current.map(|limit| limit.0),
+                Unit::Ampere,
+                "20 mA",
+            )?,
+            resonance_hz: self.limit(
+                key,
+                "resonance",
+                record.resonance.map(|hz| hz.0),
+                Unit::Hertz,
+                "18 kHz",
+            )?,
             number: record.number,
             price: self.price(key, record.price)?,
         })
@@ -203,16 +217,16 @@ impl Check<'_> {
         let line = CapacitorLine {
             dielectric: record.dielectric,
             series: record.series,
-            from_f: self.positive(key, "from", record.from.0, "1 nF")?,
-            to_f: self.positive(key, "to", record.to.0, "4.7 µF")?,
+            from_f: self.positive(key, "from", record.from.0, Unit::Farad, "1 nF")?,
+            to_f: self.positive(key, "to", record.to.0, Unit::Farad, "4.7 µF")?,
             tolerance: self.tolerance(key, record.tolerance)?,
             loss,
             drift_per_k: record.drift.map_or(0.0, |drift| drift.0),
-            voltage_v: self.limit(key, "voltage", record.voltage.map(|limit| limit.0), "63 V")?,
+            voltage_v: self.limit(key, "voltage", record.voltage.map(|limit| limit.0), Unit::Volt, "63 V")?,
             number: record.number,
             price: self.price(key, record.price)?,
         };
-        self.range(key, line.series, line.from_f, line.to_f, super::Unit::Farad)?;
+        self.range(key, line.series, line.from_f, line.to_f, Unit::Farad)?;
         Ok(line)
     }
 
@@ -220,15 +234,15 @@ impl Check<'_> {
         let line = ResistorLine {
             kind: record.kind,
             series: record.series,
-            from_ohm: self.positive(key, "from", record.from.0, "10 Ω")?,
-            to_ohm: self.positive(key, "to", record.to.0, "1 MΩ")?,
+            from_ohm: self.positive(key, "from", record.from.0, Unit::Ohm, "10 Ω")?,
+            to_ohm: self.positive(key, "to", record.to.0, Unit::Ohm, "1 MΩ")?,
             tolerance: self.tolerance(key, record.tolerance)?,
             drift_per_k: record.drift.map_or(0.0, |drift| drift.0),
-            power_w: self.limit(key, "power", record.power.map(|limit| limit.0), "0.25 W")?,
+            power_w: self.limit(key, "power", record.power.map(|limit| limit.0), Unit::Watt, "0.25 W")?,
             number: record.number,
             price: self.price(key, record.price)?,
         };
-        self.range(key, line.series, line.from_ohm, line.to_ohm, super::Unit::Ohm)?;
+        self.range(key, line.series, line.from_ohm, line.to_ohm, Unit::Ohm)?;
         Ok(line)
     }
 
@@ -237,7 +251,7 @@ impl Check<'_> {
             return Err(self.wrong(key, "values", "the list is empty; write for instance `[100 Ω, 2 kΩ]`"));
         }
         for (index, value) in record.values.iter().enumerate() {
-            self.positive(key, &format!("values[{index}]"), value.0, "2 kΩ")?;
+            self.positive(key, &format!("values[{index}]"), value.0, Unit::Ohm, "2 kΩ")?;
         }
         if !(record.resolution.0 > 0.0 && record.resolution.0 < 1.0) {
             let read = record.resolution.0 * 100.0;
@@ -280,11 +294,19 @@ impl Check<'_> {
         YamlError::at(self.path, self.text, &format!("{key}.{name}"), problem)
     }
 
-    fn positive(&self, key: &str, name: &str, value: f64, example: &str) -> Result<f64, YamlError> {
+    fn positive(
+        &self,
+        key: &str,
+        name: &str,
+        value: f64,
+        unit: Unit,
+        example: &str,
+    ) -> Result<f64, YamlError> {
         if value > 0.0 {
             return Ok(value);
         }
-        let problem = format!("read {value} in SI units; wanted more than zero, such as `{example}`");
+        let read = quantity::print(value, unit);
+        let problem = format!("read {read}; wanted more than zero, such as `{example}`");
         Err(self.wrong(key, name, problem))
     }
 
@@ -293,9 +315,10 @@ impl Check<'_> {
         key: &str,
         name: &str,
         value: Option<f64>,
+        unit: Unit,
         example: &str,
     ) -> Result<Option<f64>, YamlError> {
-        value.map(|value| self.positive(key, name, value, example)).transpose()
+        value.map(|value| self.positive(key, name, value, unit, example)).transpose()
     }
 
     fn tolerance(&self, key: &str, tolerance: Fraction) -> Result<f64, YamlError> {
@@ -318,15 +341,8 @@ impl Check<'_> {
         }
     }
 
-    fn range(
-        &self,
-        key: &str,
-        series: Series,
-        from: f64,
-        to: f64,
-        unit: super::Unit,
-    ) -> Result<(), YamlError> {
-        let shown = |value| super::quantity::print(value, unit);
+    fn range(&self, key: &str, series: Series, from: f64, to: f64, unit: Unit) -> Result<(), YamlError> {
+        let shown = |value| quantity::print(value, unit);
         if from > to {
             let problem = format!(
                 "read from {} to {}: turned round; write the smaller value at `from`",

@@ -42,6 +42,22 @@ impl YamlError {
     }
 }
 
+/// The text of `bytes`, the contents of `file`.
+///
+/// # Errors
+/// [`YamlError`] when they are not UTF-8, naming the line of the first that is not.
+pub fn decode(file: &Path, bytes: Vec<u8>) -> Result<String, YamlError> {
+    String::from_utf8(bytes).map_err(|error| {
+        let good = error.utf8_error().valid_up_to();
+        let line = 1 + error.as_bytes()[..good].iter().filter(|&&byte| byte == b'\n').count();
+        let problem = format!(
+            "byte {} is not UTF-8; save the file as UTF-8 text, or write `ohm`, `u` and `degC` for Ω, µ and °C",
+            good + 1
+        );
+        YamlError { file: file.to_owned(), line: Some(line), key: String::new(), problem }
+    })
+}
+
 /// Reads `text`, the contents of `file`.
 ///
 /// # Errors
@@ -78,6 +94,36 @@ pub fn write<T: Serialize>(file: &Path, value: &T) -> Result<String, YamlError> 
     })
 }
 
+/// Reads a value that is written as text by `read`, whose refusals are placed
+/// to that text; `wanted` says what it should have been when it is no text at all.
+///
+/// # Errors
+/// That of `read`, or of a value that is a list or holds keys.
+pub fn from_text<'de, D: Deserializer<'de>, T, E: fmt::Display>(
+    deserializer: D,
+    wanted: &str,
+    read: impl FnOnce(&str) -> Result<T, E>,
+) -> Result<T, D::Error> {
+    deserializer.deserialize_str(TextVisitor { wanted, read })
+}
+
+struct TextVisitor<'a, F> {
+    wanted: &'a str,
+    read: F,
+}
+
+impl<T, E: fmt::Display, F: FnOnce(&str) -> Result<T, E>> Visitor<'_> for TextVisitor<'_, F> {
+    type Value = T;
+
+    fn expecting(&self, out: &mut fmt::Formatter<'_>) -> fmt::Result {
+        out.write_str(self.wanted)
+    }
+
+    fn visit_str<X: de::Error>(self, text: &str) -> Result<T, X> {
+        (self.read)(text).map_err(X::custom)
+    }
+}
+
 /// Turns the crate's error into ours.
 fn explain(file: &Path, text: &str, examples: &[(&str, &str)], error: &serde_yaml::Error) -> YamlError {
     let location = error.location();
@@ -102,7 +148,7 @@ fn explain(file: &Path, text: &str, examples: &[(&str, &str)], error: &serde_yam
                 line = line_of_nth(text, &key, 1).or(line);
                 "stands there twice; keep one of the two".to_owned()
             }
-            _ => wrong_type(said),
+            _ => wrong_type(said, parent, examples),
         };
     if let Some(pointed) = location.as_ref().and_then(|at| pointed_number(text, at.index())) {
         problem += &format!("; a comma separates keys here, write a decimal point: `{pointed}`");
@@ -123,12 +169,17 @@ fn joined(parent: &str, name: &str) -> String {
 }
 
 fn missing_key(key: &str, examples: &[(&str, &str)]) -> String {
-    let plain: String =
-        key.split('[').map(|piece| piece.split_once(']').map_or(piece, |(_, rest)| rest)).collect();
-    match examples.iter().find(|(known, _)| *known == plain) {
-        Some((_, example)) => format!("is missing; add for instance `{example}`"),
+    match example_of(key, examples) {
+        Some(example) => format!("is missing; add for instance `{example}`"),
         None => "is missing; add it".to_owned(),
     }
+}
+
+/// How to write a key, whatever its place in a list.
+fn example_of<'a>(key: &str, examples: &[(&str, &'a str)]) -> Option<&'a str> {
+    let without_indices: String =
+        key.split('[').map(|piece| piece.split_once(']').map_or(piece, |(_, rest)| rest)).collect();
+    examples.iter().find(|(known, _)| *known == without_indices).map(|(_, example)| *example)
 }
 
 fn unknown_key(name: &str, rest: &str) -> String {
@@ -139,20 +190,71 @@ fn unknown_key(name: &str, rest: &str) -> String {
         .min()
         .filter(|(distance, key)| *distance <= 1 + key.len() / 3);
     let list = known.iter().map(|key| format!("`{key}`")).collect::<Vec<_>>().join(", ");
+    if name.starts_with(|c: char| c.is_ascii_digit()) {
+        return format!("is not a key here; a comma separates keys, write a decimal point before `{name}`");
+    }
     match nearest {
         Some((_, key)) => format!("is not a key here; did you mean `{key}`? (keys here: {list})"),
         None => format!("is not a key here; keys here: {list}"),
     }
 }
 
+/// What serde calls things in its messages, and what they are called here.
+const PLAIN_WORDS: &[(&str, &str)] = &[
+    ("unit value", "nothing"),
+    ("a sequence", "a list"),
+    ("sequence", "a list"),
+    ("a string", "text"),
+    ("a map", "keys"),
+    ("map", "keys"),
+    ("u32", "a whole number from 0 on"),
+    ("u64", "a whole number from 0 on"),
+    ("usize", "a whole number from 0 on"),
+    ("f64", "a number"),
+];
+
 /// Says "read …; wanted …" of a value of the wrong type.
-fn wrong_type(said: &str) -> String {
+fn wrong_type(said: &str, key: &str, examples: &[(&str, &str)]) -> String {
     let invalid = said.strip_prefix("invalid type: ").or_else(|| said.strip_prefix("invalid value: "));
-    match invalid.and_then(|rest| rest.split_once(", expected ")) {
-        Some((read, wanted)) => {
-            let read = if read == "unit value" { "nothing" } else { read };
-            format!("read {read}; wanted {wanted}")
-        }
+    let Some((read, wanted)) = invalid.and_then(|rest| rest.split_once(", expected ")) else {
+        return with_hint(said);
+    };
+    let wanted = if wanted.starts_with("struct ") { "keys" } else { wanted };
+    let example = match example_of(key, examples) {
+        Some(example) => format!(", such as `{example}`"),
+        None => String::new(),
+    };
+    format!("read {}; wanted {}{example}", plain(read), plain(wanted))
+}
+
+/// `string "x"` and `integer `3`` become the value alone in backticks.
+fn plain(words: &str) -> String {
+    if let Some((_, word)) = PLAIN_WORDS.iter().find(|(serde_says, _)| *serde_says == words) {
+        return (*word).to_owned();
+    }
+    let kinds = ["string ", "integer ", "floating point ", "boolean "];
+    match kinds.iter().find_map(|kind| words.strip_prefix(kind)) {
+        Some(value) => format!("`{}`", value.trim_matches(['"', '`'])),
+        None => words.to_owned(),
+    }
+}
+
+/// What usually lies behind a complaint of the YAML reader (common practice).
+const HINTS: &[(&str, &str)] = &[
+    ("mapping values are not allowed", "text that holds a colon and a space wants quotes"),
+    ("could not find expected ':'", "a key wants a colon and a space after it, here or above"),
+    ("tab character", "indent with spaces, not tabs"),
+    ("cannot start any token", "indent with spaces, not tabs; text that begins with a sign wants quotes"),
+    ("unexpected end of stream", "a quote is not closed, here or above"),
+    (
+        "did not find expected",
+        "look for a missing bracket, brace, quote or space after a colon, here or above",
+    ),
+];
+
+fn with_hint(said: &str) -> String {
+    match HINTS.iter().find(|(cause, _)| said.contains(cause)) {
+        Some((_, hint)) => format!("is no YAML here: {said}; {hint}"),
         None => said.to_owned(),
     }
 }
@@ -271,8 +373,12 @@ mod tests {
     }
 
     fn error(text: &str) -> YamlError {
-        read_with_examples::<Outer>(Path::new("a.yaml"), text, &[("bands.upto", "upto: 12 Hz")])
-            .expect_err("not of this shape")
+        read_with_examples::<Outer>(
+            Path::new("a.yaml"),
+            text,
+            &[("bands.upto", "upto: 12 Hz"), ("bands", "- { from: 1 Hz }")],
+        )
+        .expect_err("not of this shape")
     }
 
     #[test]
@@ -316,14 +422,44 @@ mod tests {
 
     #[test]
     fn a_value_of_the_wrong_shape_is_told() {
-        assert!(error("name: x\nbands: 3\n").problem.contains("read integer `3`; wanted a sequence"));
-        assert!(error("name: [a]\nbands: []\n").problem.contains("read sequence; wanted a string"));
+        assert_eq!(
+            error("name: x\nbands: 3\n").problem,
+            "read `3`; wanted a list, such as `- { from: 1 Hz }`"
+        );
+        assert_eq!(error("name: [a]\nbands: []\n").problem, "read a list; wanted text");
+        assert_eq!(
+            error("name: x\nbands: [no]\n").problem,
+            "read `no`; wanted keys, such as `- { from: 1 Hz }`"
+        );
+        assert_eq!(error("- 1\n").problem, "read a list; wanted keys");
     }
 
     #[test]
-    fn broken_yaml_keeps_its_line() {
-        let error = error("name: x\nbands: [1, 2\nmore: 3\n");
-        assert!(error.line.is_some_and(|line| line >= 2), "{error}");
+    fn broken_yaml_keeps_its_line_and_gets_a_hint() {
+        let cases = [
+            ("name: x\nbands: []]\n", 2, "missing bracket"),
+            ("bands: []\nname: 'x\n", 3, "quote is not closed"),
+            ("name: x\n\tbands: []\n", 2, "not tabs"),
+            ("name: x: y\nbands: []\n", 1, "wants quotes"),
+        ];
+        for (text, line, hint) in cases {
+            let error = error(text);
+            assert!(error.line == Some(line) && error.problem.contains(hint), "{error}");
+        }
+    }
+
+    #[test]
+    fn a_comma_within_a_plain_number_gets_its_hint() {
+        let error = error("{ name: 6,50 }\n");
+        assert!(error.problem.contains("write a decimal point before `50`"), "{error}");
+    }
+
+    #[test]
+    fn bytes_that_are_not_utf8_are_placed() {
+        let error = decode(Path::new("a.yaml"), b"name: x\nload: 4.7 \xb5F\n".to_vec()).expect_err("Latin-1");
+        assert_eq!(error.line, Some(2));
+        assert!(error.to_string().contains("byte 19 is not UTF-8"), "{error}");
+        assert_eq!(decode(Path::new("a.yaml"), "4.7 µF".into()).unwrap(), "4.7 µF");
     }
 
     #[test]

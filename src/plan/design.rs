@@ -75,6 +75,22 @@ pub struct SectionSummary {
     pub depth_db: Option<f64>,
     /// References of its parts.
     pub parts: Vec<String>,
+    /// All its notches, where it has more than the one above.
+    #[serde(default)]
+    pub notches: Vec<Notched>,
+}
+
+/// One notch of a section.
+#[derive(Debug, Clone, PartialEq, Serialize, Deserialize)]
+pub struct Notched {
+    /// Order it is nearest to.
+    pub order: u32,
+    /// Where it lies, hertz.
+    pub notch_hz: f64,
+    /// Loaded Q.
+    pub q: f64,
+    /// Loaded depth, decibels; `None` for a full null.
+    pub depth_db: Option<f64>,
 }
 
 /// The Q window of one order.

@@ -6,6 +6,33 @@ use num_complex::Complex64;
 use realfft::{ComplexToReal, RealFftPlanner, RealToComplex};
 
 use super::Kernel;
+use super::slow::Recursion;
+
+/// What was on the line before the first sample, for ever: a level and tones.
+#[derive(Debug, Clone, Default)]
+pub struct Past {
+    /// The level.
+    pub level: f64,
+    /// The tones on it.
+    pub tones: Vec<Tone>,
+}
+
+/// A tone: the real part of phasor · e^(j·radians·n) at sample n.
+#[derive(Debug, Clone, Copy)]
+pub struct Tone {
+    /// Phase advance a sample, radians.
+    pub radians: f64,
+    /// Amplitude and phase at sample 0.
+    pub phasor: Complex64,
+}
+
+impl Past {
+    /// The line's value `back` samples before the first.
+    pub fn before(&self, back: usize) -> f64 {
+        let tone = |tone: &Tone| (tone.phasor * Complex64::cis(-tone.radians * back as f64)).re;
+        self.level + self.tones.iter().map(tone).sum::<f64>()
+    }
+}
 
 /// One channel on its way through a [`Kernel`], by overlap-save: each FFT takes
 /// the last `after + before` samples again, and gives `hop` samples that no
@@ -23,6 +50,7 @@ pub struct Convolver {
     work: Vec<f64>,
     bins: Vec<Complex64>,
     scratch: Vec<Complex64>,
+    recursions: Vec<Recursion>,
 }
 
 impl Convolver {
@@ -38,20 +66,21 @@ impl Convolver {
             work: forward.make_input_vec(),
             bins: forward.make_output_vec(),
             scratch: vec![Complex64::default(); scratch],
+            recursions: kernel.slow().iter().map(|&pole| Recursion::new(pole)).collect(),
             kernel: kernel.clone(),
             forward,
             inverse,
         }
     }
 
-    /// What was on the line before the first sample: `past(n)` n samples before it,
-    /// from 1 to the kernel's ringing.
+    /// A line on which something was before the first sample.
     #[must_use]
-    pub fn after_a_past(mut self, past: impl Fn(usize) -> f64) -> Self {
+    pub fn after_a_past(mut self, past: &Past) -> Self {
         let after = self.kernel.after();
         for (place, back) in self.window.iter_mut().zip((1..=after).rev()) {
-            *place = past(back);
+            *place = past.before(back);
         }
+        self.recursions.iter_mut().for_each(|recursion| recursion.settle(past));
         self
     }
 
@@ -94,7 +123,11 @@ impl Convolver {
         let back = self.inverse.process_with_scratch(&mut self.bins, &mut self.work, &mut self.scratch);
         back.expect("lengths are the plan's own");
         let scale = 1.0 / self.kernel.fft_len() as f64;
+        let first = out.len();
         out.extend(self.work[after..after + count].iter().map(|sample| sample * scale));
+        for recursion in &mut self.recursions {
+            recursion.add(&self.window[after..after + count], &mut out[first..]);
+        }
         self.window.copy_within(hop.., 0);
         self.filled = self.window.len() - hop;
     }

@@ -7,11 +7,16 @@ use rayon::prelude::*;
 use realfft::RealFftPlanner;
 
 use super::SimulationError;
+use super::slow::{SlowPole, poles_within};
+use crate::network::Circuit;
 
 /// Up to this fraction of the sample rate the response is the network's own.
 pub const EXACT_UP_TO: f64 = 0.45;
 
-/// Longest FFT, samples: what a slow network may cost in memory (about 45 MB).
+/// Longest FFT, samples, that is preferred to recursions: about 10 MB a channel.
+const LONG_FFT: usize = 1 << 18;
+
+/// Longest FFT of all, samples: about 40 MB a channel.
 pub const LONGEST_FFT: usize = 1 << 20;
 
 /// Shortest FFT, samples: below this, blocks cost more than they save.
@@ -35,9 +40,32 @@ pub struct Kernel {
     after: usize,
     spectrum: Arc<[Complex64]>,
     sample_rate_hz: f64,
+    slow: Arc<[SlowPole]>,
 }
 
 impl Kernel {
+    /// The insertion ratio of a circuit. Poles whose ringing is too long for an FFT
+    /// of moderate length are taken out as recursions.
+    ///
+    /// # Errors
+    /// [`SimulationError::ResponseNotFinite`]; [`SimulationError::RingsTooLong`]
+    /// when neither recursions nor [`LONGEST_FFT`] hold its ringing.
+    pub fn of_circuit(circuit: &Circuit, sample_rate_hz: f64) -> Result<Self, SimulationError> {
+        let response = |hz: f64| circuit.insertion(hz);
+        match Self::sampled(response, Vec::new(), sample_rate_hz, LONG_FFT) {
+            Err(SimulationError::RingsTooLong { .. }) => {}
+            done => return done,
+        }
+        // From poles that ring as long as the FFT holds, to those of 5 kHz.
+        let slowest = 4.0 * sample_rate_hz / LONG_FFT as f64;
+        let mut radii = (0..20).map(|n| slowest * 3_f64.powi(n)).take_while(|radius| *radius < 3e4);
+        let recursive = radii.find_map(|radius| {
+            let slow = poles_within(circuit, radius, sample_rate_hz).filter(|slow| !slow.is_empty())?;
+            Self::sampled(response, slow, sample_rate_hz, LONG_FFT).ok()
+        });
+        recursive.map_or_else(|| Self::new(response, sample_rate_hz), Ok)
+    }
+
     /// Samples `response` (of a frequency in hertz) for this rate, on as long a
     /// grid as its ringing needs.
     ///
@@ -48,11 +76,22 @@ impl Kernel {
         response: impl Fn(f64) -> Complex64 + Sync,
         sample_rate_hz: f64,
     ) -> Result<Self, SimulationError> {
+        Self::sampled(response, Vec::new(), sample_rate_hz, LONGEST_FFT)
+    }
+
+    /// The response less what the recursions do, on a grid of at most `longest`.
+    fn sampled(
+        response: impl Fn(f64) -> Complex64 + Sync,
+        slow: Vec<SlowPole>,
+        sample_rate_hz: f64,
+        longest: usize,
+    ) -> Result<Self, SimulationError> {
         let at_half = response(sample_rate_hz / 2.0).re;
         let shaped = |cycles: f64| {
             let value = response(cycles * sample_rate_hz);
             let own = share_of_own(cycles);
-            value * own + at_half * (1.0 - own)
+            let recursions: Complex64 = slow.iter().map(|pole| pole.response(cycles)).sum();
+            value * own + at_half * (1.0 - own) - recursions
         };
         let mut fft_len = SHORTEST_FFT;
         let grid = |bin: usize, fft_len: usize| shaped(bin as f64 / fft_len as f64);
@@ -64,9 +103,10 @@ impl Kernel {
             let largest = spectrum.iter().map(|value| value.norm()).fold(0.0, f64::max);
             let (before, after) = support(&taps, TAIL * largest);
             if before + after < fft_len / 2 {
-                return Ok(Self { fft_len, before, after, spectrum: spectrum.into(), sample_rate_hz });
+                let (spectrum, slow) = (spectrum.into(), slow.into());
+                return Ok(Self { fft_len, before, after, spectrum, sample_rate_hz, slow });
             }
-            if fft_len == LONGEST_FFT {
+            if fft_len == longest {
                 let middle = &taps[fft_len / 4..fft_len * 3 / 4];
                 let left = middle.iter().map(|tap| tap * tap).sum::<f64>().sqrt() / largest;
                 let longest_s = fft_len as f64 / 2.0 / sample_rate_hz;
@@ -107,12 +147,27 @@ impl Kernel {
         self.sample_rate_hz
     }
 
-    /// The response at the bins of the FFT, from 0 to half the rate.
+    /// What becomes of a constant.
+    pub fn gain_at_dc(&self) -> f64 {
+        self.spectrum[0].re + self.slow.iter().map(|pole| pole.response(0.0).re).sum::<f64>()
+    }
+
+    /// How many slow poles (pairs count once) run as recursions.
+    pub fn recursions(&self) -> usize {
+        self.slow.len()
+    }
+
+    pub(super) fn slow(&self) -> &[SlowPole] {
+        &self.slow
+    }
+
+    /// What is applied at the bins of the FFT, from 0 to half the rate: the
+    /// response less what the recursions do.
     pub fn spectrum(&self) -> &[Complex64] {
         &self.spectrum
     }
 
-    /// The taps from −[`before`](Self::before) to [`after`](Self::after).
+    /// The taps of what is applied by FFT, from −[`before`](Self::before) to [`after`](Self::after).
     pub fn taps(&self) -> Vec<f64> {
         let ring = taps_of(&self.spectrum, self.fft_len);
         let early = &ring[self.fft_len - self.before..];
@@ -123,7 +178,11 @@ impl Kernel {
 impl std::fmt::Debug for Kernel {
     fn fmt(&self, f: &mut std::fmt::Formatter<'_>) -> std::fmt::Result {
         let Self { fft_len, before, after, sample_rate_hz, .. } = self;
-        write!(f, "Kernel {{ {before} + {after} taps in {fft_len} at {sample_rate_hz} Hz }}")
+        let slow = self.slow.len();
+        write!(
+            f,
+            "Kernel {{ {before} + {after} taps in {fft_len} at {sample_rate_hz} Hz, {slow} recursions }}"
+        )
     }
 }
 

@@ -1,7 +1,8 @@
 //! Synthetic signals with fixed seeds that the analyser's tests share.
 #![allow(dead_code)]
 
-use notchwright::analysis::PhaseTrack;
+use notchwright::analysis::{AnalyseOptions, AnalysisRun, PhaseTrack, analyse};
+use notchwright::capture::MemoryCapture;
 use rand::{RngExt, SeedableRng};
 use rand_xoshiro::Xoshiro256PlusPlus;
 use std::f64::consts::TAU;
@@ -54,4 +55,98 @@ pub fn phase_of_wander(centre_hz: f64, swing_hz: f64, rate_hz: f64, duration_s: 
         frequency_hz: time_s.iter().map(|&t| centre_hz + swing_hz * (TAU * rate_hz * t).sin()).collect(),
         time_s,
     }
+}
+
+/// Harmonics (order, amplitude) along a track, each with its phase.
+pub fn hum(track: &PhaseTrack, lines: &[(u32, f64)], phases: &[f64], rate: u32, duration_s: f64) -> Vec<f64> {
+    let count = (duration_s * f64::from(rate)) as usize;
+    (0..count)
+        .map(|n| {
+            let phase = track.phase_at(n as f64 / f64::from(rate));
+            lines.iter().zip(phases).map(|(&(k, a), theta)| a * (f64::from(k) * phase + theta).cos()).sum()
+        })
+        .collect()
+}
+
+/// The analysis of channels held in memory.
+pub fn run(rate: u32, planes: Vec<Vec<f64>>) -> AnalysisRun {
+    let mut capture = MemoryCapture::new("synthetic", rate, planes);
+    let run = analyse(&mut [&mut capture], &AnalyseOptions::default(), &mut |_| {}).expect("analysis");
+    assert_finite(&run);
+    run
+}
+
+/// Every number of an account is finite: JSON knows no other.
+pub fn assert_finite(run: &AnalysisRun) {
+    let json = serde_json::to_value(&run.analysis).expect("JSON");
+    let text = json.to_string();
+    assert!(!text.contains("NaN") && !text.contains("inf"), "{text}");
+    let read: notchwright::analysis::Analysis =
+        serde_json::from_value(json).expect("numbers, none of them null");
+    assert_eq!(read.harmonics.len(), run.analysis.harmonics.len());
+    assert!(run.spectrum.level_dbfs.iter().all(|level| level.is_finite()));
+}
+
+/// One note: a few harmonics that set in and die away.
+pub fn add_note(samples: &mut [f64], rate: u32, from_s: f64, length_s: f64, frequency_hz: f64, level: f64) {
+    let rate = f64::from(rate);
+    let first = (from_s * rate) as usize;
+    let count = (length_s * rate) as usize;
+    for (i, slot) in samples.iter_mut().skip(first).take(count).enumerate() {
+        let t = i as f64 / rate;
+        let attack = (t / 0.01).min(1.0);
+        let release = ((length_s - t) / 0.03).clamp(0.0, 1.0);
+        let decay = (-1.5 * t / length_s).exp();
+        let tone: f64 = (1..=6)
+            .filter(|&k| f64::from(k) * frequency_hz < 0.45 * rate)
+            .map(|k| (TAU * f64::from(k) * frequency_hz * t).sin() / f64::from(k * k))
+            .sum();
+        *slot += level * attack * release * decay * tone;
+    }
+}
+
+/// A bass line and two upper parts, in equal temperament on A4 = 440 Hz.
+pub fn music(rate: u32, duration_s: f64, seed: u64) -> Vec<f64> {
+    let mut noise = Noise::new(seed);
+    let mut samples = vec![0.0; (duration_s * f64::from(rate)) as usize];
+    let scale = [0, 2, 4, 5, 7, 9, 11];
+    for (lowest, span, level) in [(-38i32, 12, 0.25), (-12, 14, 0.15), (0, 14, 0.12)] {
+        let mut at = 0.0;
+        while at < duration_s {
+            let length_s = [0.25, 0.5, 0.5, 1.0, 2.0][(noise.uniform() * 5.0) as usize];
+            let step = (noise.uniform() * f64::from(span)) as i32;
+            let semitone = lowest + step / 7 * 12 + scale[(step % 7) as usize];
+            let frequency_hz = 440.0 * 2f64.powf(f64::from(semitone) / 12.0);
+            add_note(&mut samples, rate, at, length_s, frequency_hz, level * noise.between(0.5, 1.0));
+            at += length_s;
+        }
+    }
+    samples
+}
+
+/// Syllables of a gliding voice, with breath between.
+pub fn speech(rate: u32, duration_s: f64, seed: u64) -> Vec<f64> {
+    let mut noise = Noise::new(seed);
+    let mut samples = vec![0.0; (duration_s * f64::from(rate)) as usize];
+    let mut at = 0usize;
+    while at < samples.len() {
+        let length = (noise.between(0.08, 0.3) * f64::from(rate)) as usize;
+        let pause = (noise.between(0.02, 0.25) * f64::from(rate)) as usize;
+        let (from, to) = (noise.between(85.0, 180.0), noise.between(85.0, 180.0));
+        let mut phase = 0.0;
+        for i in 0..length.min(samples.len() - at) {
+            let u = i as f64 / length as f64;
+            phase += TAU * (from + (to - from) * u) / f64::from(rate);
+            let envelope = (std::f64::consts::PI * u).sin();
+            let voice: f64 = (1..=12).map(|k| (f64::from(k) * phase).sin() / f64::from(k)).sum();
+            samples[at + i] += envelope * (0.1 * voice + 0.01 * noise.normal());
+        }
+        at += length + pause;
+    }
+    samples
+}
+
+/// Mean square.
+pub fn power(samples: &[f64]) -> f64 {
+    samples.iter().map(|x| x * x).sum::<f64>() / samples.len() as f64
 }

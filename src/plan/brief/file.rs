@@ -1,13 +1,14 @@
 //! Line briefs as files: their keys, their defaults, their checks.
 
+use std::f64::consts::SQRT_2;
 use std::path::Path;
 
-use serde::{Deserialize, Deserializer, de};
+use serde::{Deserialize, Deserializer};
 
 use super::{BriefError, Centre, KeepBand, LineBrief, ReductionTarget};
 use crate::network::{Load, Source};
 use crate::parts::Unit;
-use crate::parts::quantity::{Decibels, DegreesCelsius, Farads, Henries, Hertz, Ohms, Volts, parse};
+use crate::parts::quantity::{Decibels, DegreesCelsius, Farads, Henries, Hertz, Ohms, parse, print};
 use crate::parts::yaml::{self, YamlError};
 
 /// Wander designed for where the brief says nothing, hertz.
@@ -36,6 +37,8 @@ const EXAMPLES: &[(&str, &str)] = &[
     ("keep.to", "to: 12 Hz"),
     ("keep.loss", "loss: 0.5 dB"),
     ("hum", "hum: { reduce_by: 40 dB }"),
+    ("hum.orders", "orders: [1, 3]"),
+    ("temperature", "temperature: { from: 10 °C, to: 35 °C }"),
     ("temperature.from", "from: 10 °C"),
     ("temperature.to", "to: 35 °C"),
 ];
@@ -99,10 +102,11 @@ struct FullScale(f64);
 
 impl<'de> Deserialize<'de> for FullScale {
     fn deserialize<D: Deserializer<'de>>(deserializer: D) -> Result<Self, D::Error> {
-        let text = String::deserialize(deserializer)?;
-        let volts = parse(&text, Unit::Volt).map_err(de::Error::custom)?;
-        let level = ["dBu", "dBV"].iter().any(|unit| text.trim_end().ends_with(unit));
-        Ok(Self(if level { volts * std::f64::consts::SQRT_2 } else { volts }))
+        yaml::from_text(deserializer, "a voltage with its unit, such as `2 V`", |text| {
+            let level = ["dBu", "dBV"].iter().any(|unit| text.trim_end().ends_with(unit));
+            let factor = if level { SQRT_2 } else { 1.0 };
+            parse(text, Unit::Volt).map(|volts| Self(volts * factor))
+        })
     }
 }
 
@@ -115,12 +119,13 @@ enum Leave {
 
 impl<'de> Deserialize<'de> for Leave {
     fn deserialize<D: Deserializer<'de>>(deserializer: D) -> Result<Self, D::Error> {
-        let text = String::deserialize(deserializer)?;
-        if text.trim_end().ends_with("dBFS") {
-            return parse(&text, Unit::DecibelFullScale).map(Self::Dbfs).map_err(de::Error::custom);
-        }
-        let volts = parse(&text, Unit::Volt);
-        volts.map(Self::Volts).map_err(|error| de::Error::custom(format!("{error} or `-90 dBFS`")))
+        let wanted = "a level with its unit, such as `20 µV` or `-90 dBFS`";
+        yaml::from_text(deserializer, wanted, |text| match text.trim_end().ends_with("dBFS") {
+            true => parse(text, Unit::DecibelFullScale).map(Self::Dbfs).map_err(|error| error.to_string()),
+            false => {
+                parse(text, Unit::Volt).map(Self::Volts).map_err(|error| format!("{error} or `-90 dBFS`"))
+            }
+        })
     }
 }
 
@@ -129,14 +134,12 @@ struct CentreName(Centre);
 
 impl<'de> Deserialize<'de> for CentreName {
     fn deserialize<D: Deserializer<'de>>(deserializer: D) -> Result<Self, D::Error> {
-        let text = String::deserialize(deserializer)?;
-        match text.trim() {
+        let wanted = "`nominal` (public grids) or `measured` (islands, generators)";
+        yaml::from_text(deserializer, wanted, |text| match text.trim() {
             "nominal" => Ok(Self(Centre::Nominal)),
             "measured" => Ok(Self(Centre::Measured)),
-            _ => Err(de::Error::custom(format!(
-                "read `{text}`; wanted `nominal` (public grids) or `measured` (islands, generators)"
-            ))),
-        }
+            _ => Err(format!("read `{text}`; wanted {wanted}")),
+        })
     }
 }
 
@@ -146,9 +149,8 @@ impl LineBrief {
     /// # Errors
     /// [`BriefError`] naming file, line, key, what was read and what would do.
     pub fn read(path: &Path) -> Result<Self, BriefError> {
-        let text = std::fs::read_to_string(path)
-            .map_err(|source| BriefError::Io { path: path.to_owned(), source })?;
-        Ok(Self::from_text(path, &text)?)
+        let bytes = std::fs::read(path).map_err(|source| BriefError::Io { path: path.to_owned(), source })?;
+        Ok(Self::from_text(path, &yaml::decode(path, bytes)?)?)
     }
 
     /// Reads and checks a line brief from `text`, the contents of `path`.
@@ -160,24 +162,18 @@ impl LineBrief {
         let check = Check { path, text };
         let (temperature_from_c, temperature_to_c) = check.temperature(record.temperature)?;
         let hum = record.hum;
+        let allow_hz = hum.allow.map_or(DEFAULT_ALLOW_HZ, |hz| hz.0);
+        let guard_hz = hum.guard.map_or(DEFAULT_GUARD_HZ, |hz| hz.0);
         let brief = Self {
             line: record.line,
-            full_scale_v: check.positive("full_scale", record.full_scale.0, "2 V")?,
+            full_scale_v: check.positive("full_scale", record.full_scale.0, Unit::Volt, "2 V")?,
             source: check.source(&record.source)?,
             load: check.load(&record.load)?,
             keep: check.keep(&record.keep)?,
             target: check.target(hum.reduce_by, hum.leave)?,
             orders: check.orders(hum.orders)?,
-            allow_hz: check.not_negative(
-                "hum.allow",
-                hum.allow.map_or(DEFAULT_ALLOW_HZ, |hz| hz.0),
-                "0.2 Hz",
-            )?,
-            guard_hz: check.not_negative(
-                "hum.guard",
-                hum.guard.map_or(DEFAULT_GUARD_HZ, |hz| hz.0),
-                "5 Hz",
-            )?,
+            allow_hz: check.not_negative("hum.allow", allow_hz, Unit::Hertz, "0.2 Hz")?,
+            guard_hz: check.not_negative("hum.guard", guard_hz, Unit::Hertz, "5 Hz")?,
             centre: hum.centre.map_or(Centre::Nominal, |centre| centre.0),
             temperature_from_c,
             temperature_to_c,
@@ -199,35 +195,40 @@ impl Check<'_> {
         YamlError::at(self.path, self.text, key, problem)
     }
 
-    fn positive(&self, key: &str, value: f64, example: &str) -> Result<f64, YamlError> {
-        match value > 0.0 {
-            true => Ok(value),
-            false => {
-                Err(self.wrong(key, format!("read {value}; wanted more than zero, such as `{example}`")))
-            }
+    fn positive(&self, key: &str, value: f64, unit: Unit, example: &str) -> Result<f64, YamlError> {
+        if value > 0.0 {
+            return Ok(value);
         }
+        let read = print(value, unit);
+        Err(self.wrong(key, format!("read {read}; wanted more than zero, such as `{example}`")))
     }
 
-    fn not_negative(&self, key: &str, value: f64, example: &str) -> Result<f64, YamlError> {
-        match value >= 0.0 {
-            true => Ok(value),
-            false => Err(self.wrong(key, format!("read {value}; wanted zero or more, such as `{example}`"))),
+    fn not_negative(&self, key: &str, value: f64, unit: Unit, example: &str) -> Result<f64, YamlError> {
+        if value >= 0.0 {
+            return Ok(value);
         }
+        let read = print(value, unit);
+        Err(self.wrong(key, format!("read {read}; wanted zero or more, such as `{example}`")))
     }
 
     fn source(&self, record: &SourceRecord) -> Result<Source, YamlError> {
         let inductance_h = record.inductance.map_or(0.0, |henries| henries.0);
         Ok(Source {
-            resistance_ohm: self.not_negative("source.resistance", record.resistance.0, "350 Ω")?,
-            inductance_h: self.not_negative("source.inductance", inductance_h, "10 mH")?,
+            resistance_ohm: self.not_negative(
+                "source.resistance",
+                record.resistance.0,
+                Unit::Ohm,
+                "350 Ω",
+            )?,
+            inductance_h: self.not_negative("source.inductance", inductance_h, Unit::Henry, "10 mH")?,
         })
     }
 
     fn load(&self, record: &LoadRecord) -> Result<Load, YamlError> {
         let capacitance_f = record.capacitance.map_or(0.0, |farads| farads.0);
         Ok(Load {
-            resistance_ohm: self.positive("load.resistance", record.resistance.0, "1 MΩ")?,
-            capacitance_f: self.not_negative("load.capacitance", capacitance_f, "220 pF")?,
+            resistance_ohm: self.positive("load.resistance", record.resistance.0, Unit::Ohm, "1 MΩ")?,
+            capacitance_f: self.not_negative("load.capacitance", capacitance_f, Unit::Farad, "220 pF")?,
         })
     }
 
@@ -246,7 +247,7 @@ impl Check<'_> {
 
     fn keep_band(&self, key: &str, record: &KeepRecord) -> Result<KeepBand, YamlError> {
         let (from_hz, to_hz) = (record.from.0, record.to.0);
-        self.not_negative(&format!("{key}.from"), from_hz, "0 Hz")?;
+        self.not_negative(&format!("{key}.from"), from_hz, Unit::Hertz, "0 Hz")?;
         if to_hz <= from_hz {
             let what = if to_hz < from_hz { "turned round" } else { "no width" };
             let problem = format!(
@@ -277,10 +278,10 @@ impl Check<'_> {
                 Err(self.wrong("hum.reduce_by", format!("neither it nor `leave` is there; {choose}")))
             }
             (Some(Decibels(db)), None) => {
-                self.positive("hum.reduce_by", db, "40 dB").map(ReductionTarget::ReduceByDb)
+                self.positive("hum.reduce_by", db, Unit::Decibel, "40 dB").map(ReductionTarget::ReduceByDb)
             }
             (None, Some(Leave::Volts(volts))) => {
-                self.positive("hum.leave", volts, "20 µV").map(ReductionTarget::LeaveV)
+                self.positive("hum.leave", volts, Unit::Volt, "20 µV").map(ReductionTarget::LeaveV)
             }
             (None, Some(Leave::Dbfs(dbfs))) if dbfs < 0.0 => Ok(ReductionTarget::LeaveDbfs(dbfs)),
             (None, Some(Leave::Dbfs(dbfs))) => Err(self

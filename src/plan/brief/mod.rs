@@ -7,8 +7,9 @@ use std::path::{Path, PathBuf};
 use serde::{Deserialize, Serialize};
 
 use crate::network::{Load, Source};
+use crate::parts::quantity::print;
 use crate::parts::yaml::{YamlError, line_of};
-use crate::parts::{PartsError, Stock};
+use crate::parts::{PartsError, Stock, Unit};
 
 /// Where the design spread is centred.
 #[derive(Debug, Clone, Copy, PartialEq, Eq, Serialize, Deserialize)]
@@ -201,9 +202,12 @@ impl LineBrief {
     fn nothing_left(&self, brief_path: &Path, index: usize, fundamental_hz: f64) -> BriefError {
         let band = &self.keep[index];
         let problem = format!(
-            "read from {} Hz to {} Hz, all of it within ± {} Hz of lines of {fundamental_hz} Hz hum: nothing is \
+            "read from {} Hz to {} Hz, all of it within ± {} Hz of lines of {} hum: nothing is \
              left to judge; widen the band, or lower `guard`",
-            band.from_hz, band.to_hz, self.guard_hz
+            band.from_hz,
+            band.to_hz,
+            self.guard_hz,
+            print(fundamental_hz, Unit::Hertz)
         );
         self.wrong(brief_path, &format!("keep[{index}]"), problem)
     }

@@ -1,0 +1,79 @@
+//! Harmonics above half the sample rate, and where they fold to.
+
+use super::findings::FoldedHarmonic;
+
+/// Highest order listed.
+const ORDERS: u32 = 15;
+
+/// Every harmonic up to the 15th that the sample rate folds.
+pub(super) fn folded_harmonics(fundamental_hz: f64, sample_rate_hz: f64) -> Vec<FoldedHarmonic> {
+    let half = 0.5 * sample_rate_hz;
+    (1..=ORDERS)
+        .filter(|&k| {
+            f64::from(k) * fundamental_hz > half || (k == 1 && is_half_rate(fundamental_hz, sample_rate_hz))
+        })
+        .map(|order| {
+            let frequency_hz = f64::from(order) * fundamental_hz;
+            let appears_at_hz = appears_at(frequency_hz, sample_rate_hz);
+            let remark = remark(order, appears_at_hz, fundamental_hz, sample_rate_hz);
+            FoldedHarmonic { order, frequency_hz, appears_at_hz, remark }
+        })
+        .collect()
+}
+
+/// Whether the fundamental is half the sample rate, as near as matters.
+pub(super) fn is_half_rate(fundamental_hz: f64, sample_rate_hz: f64) -> bool {
+    (fundamental_hz - 0.5 * sample_rate_hz).abs() < 0.01 * fundamental_hz
+}
+
+/// Distance to the nearest multiple of the rate.
+pub(super) fn appears_at(frequency_hz: f64, sample_rate_hz: f64) -> f64 {
+    (frequency_hz - (frequency_hz / sample_rate_hz).round() * sample_rate_hz).abs()
+}
+
+fn remark(order: u32, appears_at_hz: f64, fundamental_hz: f64, sample_rate_hz: f64) -> String {
+    if order == 1 {
+        return format!(
+            "half the sample rate: f and {sample_rate_hz} Hz − f cannot be told apart, and the level beats with the phase"
+        );
+    }
+    // Twice the 1 % of a public grid, at this order, is too near to be told apart.
+    let near = 0.02 * fundamental_hz;
+    if appears_at_hz < near {
+        return "folds onto 0 Hz: it looks like a slow change of the wanted signal".to_owned();
+    }
+    let beside = (appears_at_hz / fundamental_hz).round();
+    if beside >= 1.0 && (appears_at_hz - beside * fundamental_hz).abs() < near {
+        return format!("folds onto order {beside}: what is read there is the two together");
+    }
+    if appears_at_hz < fundamental_hz {
+        return "appears below the fundamental, where wanted signal may be".to_owned();
+    }
+    "appears as a line of its own".to_owned()
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+
+    #[test]
+    fn at_150_hz_the_second_harmonic_of_50_hz_lands_on_the_fundamental() {
+        let folded = folded_harmonics(50.0, 150.0);
+        let second = folded.iter().find(|f| f.order == 2).expect("folded");
+        assert!((second.appears_at_hz - 50.0).abs() < 1e-9);
+        assert!(second.remark.contains("order 1"), "{}", second.remark);
+        assert!(folded.iter().find(|f| f.order == 3).expect("folded").remark.contains("0 Hz"));
+    }
+
+    #[test]
+    fn at_100_hz_the_fundamental_is_half_the_rate() {
+        let folded = folded_harmonics(49.98, 100.0);
+        assert_eq!(folded[0].order, 1);
+        assert!(folded[0].remark.contains("cannot be told apart"));
+    }
+
+    #[test]
+    fn at_48_khz_nothing_that_matters_folds() {
+        assert!(folded_harmonics(50.0, 48000.0).is_empty());
+    }
+}

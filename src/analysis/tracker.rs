@@ -1,0 +1,464 @@
+//! The phase of the line from the phasors of all its harmonics.
+//!
+//! Three steps. A search over windows, as long as the wander allows, finds the
+//! offset from the reference that fits all clear harmonics together. The phase of
+//! the clearest harmonic then joins the windows. Last, phases measured in every
+//! cell by all significant harmonics, each with weight k²Aₖ²/noise (the Gauss–Newton
+//! step of the joint least squares), go through the Kalman smoother, again and again
+//! until nothing moves.
+
+use super::kalman::{Advance, Phases, Smoothed};
+use super::phasors::BlockPhasors;
+use num_complex::Complex64;
+use std::f64::consts::{LN_2, TAU};
+
+/// Longest window of the search in seconds.
+const LONGEST_WINDOW_S: f64 = 32.0;
+/// Rounds of the last step.
+const ROUNDS: usize = 7;
+/// A harmonic counts from this ratio of power to noise in 1/T.
+const SIGNIFICANT: f64 = 8.0;
+/// What a window of its own must gain, in nats.
+const WINDOW_COST: f64 = 2.0;
+/// Phasors are limited in the search to so many times the typical one.
+const LARGEST: f64 = 2.5;
+/// Degrees of freedom of the weights where noise is heavy-tailed (Student's t).
+const TAIL: f64 = 4.0;
+
+/// Phasors averaged over a few blocks, so that neighbours are nearly independent.
+#[derive(Debug, Clone)]
+pub(super) struct Cells {
+    pub orders: Vec<u32>,
+    pub length_s: f64,
+    pub time_s: Vec<f64>,
+    /// By order, then by cell.
+    pub values: Vec<Vec<Complex64>>,
+    /// One-sided noise density around each order: mean square per hertz.
+    pub density: Vec<f64>,
+    /// Part of a whole cell that each is made of: the last may be short.
+    share: Vec<f64>,
+    blocks: usize,
+    gathered: usize,
+    sums: Vec<Complex64>,
+    sum_time: f64,
+}
+
+impl Cells {
+    /// Cells of so many blocks.
+    pub fn new(orders: &[u32], hop_s: f64, blocks: usize) -> Self {
+        Self {
+            orders: orders.to_vec(),
+            length_s: blocks as f64 * hop_s,
+            time_s: Vec::new(),
+            values: vec![Vec::new(); orders.len()],
+            density: Vec::new(),
+            share: Vec::new(),
+            blocks,
+            gathered: 0,
+            sums: vec![Complex64::ZERO; orders.len()],
+            sum_time: 0.0,
+        }
+    }
+
+    /// Takes a block in.
+    pub fn take(&mut self, block: &BlockPhasors) {
+        for (sum, value) in self.sums.iter_mut().zip(&block.values) {
+            *sum += value;
+        }
+        self.sum_time += block.time_s;
+        self.gathered += 1;
+        if self.gathered == self.blocks {
+            self.close();
+        }
+    }
+
+    /// Closes the last cell, which may be short.
+    pub fn finish(&mut self) {
+        if self.gathered > 0 && self.count() > 0 {
+            self.close();
+        }
+    }
+
+    fn close(&mut self) {
+        let share = 1.0 / self.gathered as f64;
+        for (line, sum) in self.values.iter_mut().zip(&mut self.sums) {
+            line.push(*sum * share);
+            *sum = Complex64::ZERO;
+        }
+        self.time_s.push(self.sum_time * share);
+        self.share.push(self.gathered as f64 / self.blocks as f64);
+        (self.gathered, self.sum_time) = (0, 0.0);
+    }
+
+    fn count(&self) -> usize {
+        self.time_s.len()
+    }
+
+    /// Noise variance of each component of a cell.
+    fn variance(&self, line: usize) -> f64 {
+        let values = &self.values[line];
+        let power = values.iter().map(Complex64::norm_sqr).sum::<f64>() / values.len().max(1) as f64;
+        // Where nothing but the line is there, arithmetic is the noise.
+        (self.density[line] / self.length_s).max(1e-12 * power).max(1e-34)
+    }
+}
+
+/// What the tracker found.
+#[derive(Debug, Clone)]
+pub(super) struct Tracked {
+    /// Offset from the reference's phase, by cell.
+    pub smoothed: Smoothed,
+    /// The phases that went into the smoother.
+    pub phases: Phases,
+    /// Wander of the angular frequency, rad²/s³.
+    pub wander: f64,
+    /// Advance of the offset over the capture.
+    pub advance: Advance,
+    /// How each order stands, in the sequence of the orders.
+    pub lines: Vec<Line>,
+}
+
+/// How one harmonic stands in the cells.
+#[derive(Debug, Clone, Copy, Default)]
+pub(super) struct Line {
+    /// Power over noise in 1/T from medians over time: what comes and goes does not count.
+    pub lasting: f64,
+    /// Median over time of its amplitude over the mean one: 1 for a steady line.
+    pub steadiness: f64,
+}
+
+/// Tracks the phase; `clear` are the orders to begin with, the clearest first,
+/// `reach_hz` how far off the fundamental may be.
+pub(super) fn track(cells: &Cells, clear: &[u32], reach_hz: f64, duration_s: f64) -> Option<Tracked> {
+    if cells.count() < 4 {
+        return None;
+    }
+    let start = Search::new(cells, clear, reach_hz)?;
+    let mut phase = start.joined_phase();
+    let lead_order = f64::from(cells.orders[start.lead()]);
+    let mut phase_sd = 0.5 / lead_order;
+    let mut found = None;
+    for round in 0..ROUNDS {
+        let phases = measured_phases(cells, &phase, phase_sd, start.lead(), round >= 1);
+        let wander = phases.likeliest_wander();
+        let smoothed = phases.smoothed(wander);
+        let count = phase.len() as f64;
+        let moved =
+            phase.iter().zip(&smoothed.phase_rad).map(|(a, b)| (a - b) * (a - b)).sum::<f64>() / count;
+        let posterior = smoothed.phase_variance.iter().sum::<f64>() / count;
+        phase_sd = (posterior + 0.1 * moved).sqrt();
+        phase.clone_from(&smoothed.phase_rad);
+        found = Some((phases, wander, smoothed));
+    }
+    let (phases, wander, smoothed) = found?;
+    let advance = phases.advance(wander, duration_s);
+    let lines = (0..cells.orders.len()).map(|i| standing(cells, i, &smoothed.phase_rad)).collect();
+    Some(Tracked { smoothed, phases, wander, advance, lines })
+}
+
+/// One measured phase a cell, by all significant harmonics together.
+fn measured_phases(cells: &Cells, phase: &[f64], phase_sd: f64, lead: usize, robust: bool) -> Phases {
+    let count = cells.count();
+    let (mut pull, mut information) = (vec![0.0; count], vec![0.0; count]);
+    let mut lines: Vec<(usize, f64)> = Vec::new();
+    for line in 0..cells.orders.len() {
+        let k = f64::from(cells.orders[line]);
+        let mean = mean_of(turned(cells, line, phase), cells);
+        let ratio = mean.norm_sqr() * count as f64 / (2.0 * cells.variance(line));
+        if ratio > SIGNIFICANT && k * phase_sd < 0.6 {
+            lines.push((line, k));
+        }
+    }
+    if lines.is_empty() {
+        lines.push((lead, f64::from(cells.orders[lead])));
+    }
+    for (line, k) in lines {
+        let turned: Vec<Complex64> = turned(cells, line, phase).collect();
+        let (mean, variance, weights) = weighted_mean(&turned, cells, cells.variance(line), robust);
+        for (b, z) in turned.iter().enumerate() {
+            let weight = cells.share[b] * weights.as_ref().map_or(1.0, |w| w[b]) / variance;
+            pull[b] += weight * k * (mean.conj() * z).im;
+            information[b] += weight * k * k * mean.norm_sqr();
+        }
+    }
+    let least = 1e-13;
+    Phases {
+        time_s: cells.time_s.clone(),
+        phase_rad: (0..count).map(|b| phase[b] + pull[b] / information[b].max(1e-30)).collect(),
+        variance: information.iter().map(|i| (1.0 / i.max(1e-30)).max(least)).collect(),
+    }
+}
+
+fn mean_of(values: impl Iterator<Item = Complex64>, cells: &Cells) -> Complex64 {
+    let total: f64 = cells.share.iter().sum();
+    values.zip(&cells.share).map(|(z, share)| z * share).sum::<Complex64>() / total
+}
+
+fn turned<'a>(cells: &'a Cells, line: usize, phase: &'a [f64]) -> impl Iterator<Item = Complex64> + 'a {
+    let k = f64::from(cells.orders[line]);
+    cells.values[line].iter().zip(phase).map(move |(z, p)| z * Complex64::cis(-k * p))
+}
+
+/// Mean phasor, noise variance of a component, and weights where the noise is
+/// so heavy-tailed (music, clicks) that cells differ in worth.
+fn weighted_mean(
+    turned: &[Complex64],
+    cells: &Cells,
+    variance: f64,
+    robust: bool,
+) -> (Complex64, f64, Option<Vec<f64>>) {
+    let mean = mean_of(turned.iter().copied(), cells);
+    if !robust || turned.len() < 16 {
+        return (mean, variance, None);
+    }
+    let mut mean = component_median(turned);
+    let mut squares: Vec<f64> = turned.iter().map(|z| (z - mean).norm_sqr()).collect();
+    // Median of |n|² is 2·ln 2 of a component's variance.
+    let typical = (median(&mut squares) / (2.0 * LN_2)).max(1e-34);
+    if typical > 0.5 * variance {
+        return (mean_of(turned.iter().copied(), cells), variance, None);
+    }
+    let mut weights = Vec::new();
+    for _ in 0..4 {
+        weights = turned.iter().map(|z| (TAIL + 2.0) / (TAIL + (z - mean).norm_sqr() / typical)).collect();
+        let total: f64 = weights.iter().sum();
+        mean = turned.iter().zip(&weights).map(|(z, w)| z * w).sum::<Complex64>() / total;
+    }
+    (mean, typical, Some(weights))
+}
+
+/// How a harmonic stands along the track.
+fn standing(cells: &Cells, line: usize, phase: &[f64]) -> Line {
+    let count = cells.count();
+    let group = (count / 24).max(1);
+    let turned: Vec<Complex64> = turned(cells, line, phase).collect();
+    let groups: Vec<Complex64> =
+        turned.chunks_exact(group).map(|part| part.iter().sum::<Complex64>() / group as f64).collect();
+    let middle = component_median(&groups);
+    let mut squares: Vec<f64> = groups.iter().map(|z| (z - middle).norm_sqr()).collect();
+    let expected = 2.0 * cells.variance(line) / group as f64;
+    let mut scatter = median(&mut squares) / LN_2;
+    if groups.len() < 16 {
+        scatter = scatter.max(expected);
+    }
+    let scatter = scatter.max(1e-34).max(1e-3 * expected);
+    // The median of n Gaussians strays π/2 as much, in power, as their mean.
+    let lasting = middle.norm_sqr() * groups.len() as f64 / (scatter * std::f64::consts::FRAC_PI_2);
+    let mean = groups.iter().sum::<Complex64>() / groups.len() as f64;
+    let steadiness = (mean.conj() * middle).re / mean.norm_sqr().max(1e-40);
+    Line { lasting, steadiness: steadiness.clamp(0.0, 2.0) }
+}
+
+fn component_median(values: &[Complex64]) -> Complex64 {
+    let mut re: Vec<f64> = values.iter().map(|z| z.re).collect();
+    let mut im: Vec<f64> = values.iter().map(|z| z.im).collect();
+    Complex64::new(median(&mut re), median(&mut im))
+}
+
+fn median(values: &mut [f64]) -> f64 {
+    if values.is_empty() {
+        return 0.0;
+    }
+    let middle = values.len() / 2;
+    *values.select_nth_unstable_by(middle, f64::total_cmp).1
+}
+
+/// The windowed search for the offset from the reference.
+struct Search<'a> {
+    cells: &'a Cells,
+    /// Lines to use.
+    lines: Vec<SearchLine>,
+    window: usize,
+    fits: Vec<Fit>,
+}
+
+/// One harmonic in the search.
+#[derive(Clone)]
+struct SearchLine {
+    line: usize,
+    order: f64,
+    /// Phasors, none larger than a few times the typical one: a click or a heart
+    /// beat must not decide a window.
+    values: Vec<Complex64>,
+    /// Noise variance of a component.
+    variance: f64,
+}
+
+impl SearchLine {
+    fn new(cells: &Cells, line: usize) -> Self {
+        let values = &cells.values[line];
+        let most = LARGEST * median(&mut values.iter().map(|z| z.norm()).collect::<Vec<_>>());
+        let values: Vec<Complex64> =
+            values.iter().map(|z| z * (most / z.norm().max(1e-30)).min(1.0)).collect();
+        // Where limiting took noise away, the noise is what differs from cell to cell.
+        let differences = values.windows(2).map(|pair| (pair[1] - pair[0]).norm_sqr()).sum::<f64>();
+        let left = differences / (4.0 * (values.len().max(2) - 1) as f64);
+        let variance = cells.variance(line).min(left).max(1e-3 * cells.variance(line));
+        Self { line, order: f64::from(cells.orders[line]), values, variance }
+    }
+
+    /// Σ z e^(−j2πk·offset·t) over the cells of a window, by Horner's rule.
+    fn sum_at(&self, bounds: (usize, usize), offset_hz: f64, cell_s: f64) -> Complex64 {
+        let step = Complex64::cis(-TAU * self.order * offset_hz * cell_s);
+        self.values[bounds.0..bounds.1].iter().rev().fold(Complex64::ZERO, |sum, z| sum * step + z)
+    }
+}
+
+/// Best offset in one window.
+#[derive(Clone, Copy)]
+struct Fit {
+    middle_s: f64,
+    offset_hz: f64,
+    /// Log-likelihood over what noise would give.
+    gain: f64,
+}
+
+impl<'a> Search<'a> {
+    fn new(cells: &'a Cells, clear: &[u32], reach_hz: f64) -> Option<Self> {
+        let position = |k: &u32| cells.orders.iter().position(|order| order == k);
+        let mut chosen: Vec<usize> = clear.iter().filter_map(position).collect();
+        // Low orders carry the search over the widest range.
+        if chosen.iter().any(|&i| cells.orders[i] <= 12) {
+            chosen.retain(|&i| cells.orders[i] <= 12);
+        }
+        chosen.truncate(8);
+        if chosen.is_empty() {
+            chosen = (0..cells.orders.len().min(3)).collect();
+        }
+        if chosen.is_empty() {
+            return None;
+        }
+        let lines: Vec<SearchLine> = chosen.into_iter().map(|i| SearchLine::new(cells, i)).collect();
+        let longest = ((LONGEST_WINDOW_S / cells.length_s) as usize).clamp(4, cells.count());
+        let shortest = ((1.0 / cells.length_s) as usize).clamp(4, longest);
+        let lengths = std::iter::successors(Some(longest), |&n| (n / 2 >= shortest).then_some(n / 2));
+        let mut tried: Vec<Self> = lengths
+            .map(|window| {
+                let mut search = Self { cells, lines: lines.clone(), window, fits: Vec::new() };
+                search.fit_all(reach_hz);
+                search
+            })
+            .collect();
+        let most = tried.iter().map(Self::gain).fold(f64::MIN, f64::max);
+        // The longest that holds nearly all: long windows do not slip a cycle.
+        let chosen = tried.iter().position(|search| search.gain() >= most - 0.12 * most.abs())?;
+        Some(tried.swap_remove(chosen))
+    }
+
+    fn gain(&self) -> f64 {
+        self.fits.iter().map(|fit| fit.gain).sum()
+    }
+
+    /// The line with the most power over noise.
+    fn lead(&self) -> usize {
+        let best = self.lines.iter().max_by(|a, b| self.strength(a).total_cmp(&self.strength(b)));
+        best.map_or(0, |line| line.line)
+    }
+
+    fn strength(&self, line: &SearchLine) -> f64 {
+        let sums = self.fits.iter().enumerate();
+        let power =
+            sums.map(|(w, fit)| line.sum_at(self.bounds(w), fit.offset_hz, self.cells.length_s).norm_sqr());
+        power.sum::<f64>() / line.variance
+    }
+
+    fn bounds(&self, window: usize) -> (usize, usize) {
+        let count = self.cells.count();
+        let parts = count.div_ceil(self.window);
+        (window * count / parts, (window + 1) * count / parts)
+    }
+
+    fn fit_all(&mut self, reach_hz: f64) {
+        let top = self.lines.iter().map(|line| line.order).fold(1.0, f64::max);
+        let reach_hz = reach_hz.min(0.45 / (self.cells.length_s * top));
+        let parts = self.cells.count().div_ceil(self.window);
+        self.fits = (0..parts).map(|w| self.fit(self.bounds(w), reach_hz, top)).collect();
+    }
+
+    fn fit(&self, bounds: (usize, usize), reach_hz: f64, top: f64) -> Fit {
+        let cells = bounds.1 - bounds.0;
+        let length_s = cells as f64 * self.cells.length_s;
+        let steps = (6.0 * length_s * top * reach_hz).ceil().max(1.0) as i32;
+        let step_hz = reach_hz / f64::from(steps);
+        let likelihood = |offset_hz: f64| -> f64 {
+            let power = |line: &SearchLine| {
+                let sum = line.sum_at(bounds, offset_hz, self.cells.length_s);
+                sum.norm_sqr() / (2.0 * line.variance * cells as f64)
+            };
+            self.lines.iter().map(power).sum()
+        };
+        let grid: Vec<f64> = (-steps..=steps).map(|i| likelihood(f64::from(i) * step_hz)).collect();
+        let best = (0..grid.len()).max_by(|&a, &b| grid[a].total_cmp(&grid[b])).unwrap_or(0);
+        // A parabola through the peak and its neighbours.
+        let shift = if best > 0 && best + 1 < grid.len() {
+            let (l, c, r) = (grid[best - 1], grid[best], grid[best + 1]);
+            (0.5 * (l - r) / (l - 2.0 * c + r).min(-1e-30)).clamp(-0.5, 0.5)
+        } else {
+            0.0
+        };
+        let chance = self.lines.len() as f64 + (1.0 + 2.0 * reach_hz * length_s * top).ln() + WINDOW_COST;
+        Fit {
+            middle_s: 0.5 * (self.cells.time_s[bounds.0] + self.cells.time_s[bounds.1 - 1]),
+            offset_hz: (best as f64 - f64::from(steps) + shift) * step_hz,
+            gain: grid[best] - chance,
+        }
+    }
+
+    /// Offset phase at each cell: the integral of the fitted offsets, then
+    /// joined from window to window by the phase of the clearest line.
+    fn joined_phase(&self) -> Vec<f64> {
+        let offsets = self.offsets();
+        let mut phase = vec![0.0; offsets.len()];
+        for b in 1..phase.len() {
+            let dt = self.cells.time_s[b] - self.cells.time_s[b - 1];
+            phase[b] = phase[b - 1] + TAU * 0.5 * (offsets[b] + offsets[b - 1]) * dt;
+        }
+        let correction = self.phase_correction(&phase);
+        phase.iter().zip(correction).map(|(p, c)| p + c).collect()
+    }
+
+    fn offsets(&self) -> Vec<f64> {
+        let sure: Vec<&Fit> = self.fits.iter().filter(|fit| fit.gain > 2.0).collect();
+        let best = self.fits.iter().max_by(|a, b| a.gain.total_cmp(&b.gain));
+        let knots: Vec<(f64, f64)> = if sure.is_empty() {
+            best.iter().map(|fit| (fit.middle_s, fit.offset_hz)).collect()
+        } else {
+            sure.iter().map(|fit| (fit.middle_s, fit.offset_hz)).collect()
+        };
+        self.cells.time_s.iter().map(|&t| between(&knots, t)).collect()
+    }
+
+    fn phase_correction(&self, phase: &[f64]) -> Vec<f64> {
+        let line = self.lead();
+        let k = f64::from(self.cells.orders[line]);
+        let variance = self.cells.variance(line);
+        let turned: Vec<Complex64> = turned(self.cells, line, phase).collect();
+        let length = (self.window / 2).max(1);
+        let hop = (length / 2).max(1);
+        let mut knots: Vec<(f64, f64)> = Vec::new();
+        let mut from = 0;
+        while from + length <= turned.len() {
+            let sum: Complex64 = turned[from..from + length].iter().sum();
+            if sum.norm_sqr() / (2.0 * variance * length as f64) > 5.0 {
+                let angle = sum.arg();
+                let last = knots.last().map_or(angle, |&(_, last)| last);
+                let near = angle + TAU * ((last - angle) / TAU).round();
+                let middle_s = 0.5 * (self.cells.time_s[from] + self.cells.time_s[from + length - 1]);
+                knots.push((middle_s, near));
+            }
+            from += hop;
+        }
+        self.cells.time_s.iter().map(|&t| between(&knots, t) / k).collect()
+    }
+}
+
+/// Straight lines between knots, level outside; 0 where there are none.
+fn between(knots: &[(f64, f64)], t: f64) -> f64 {
+    let right = knots.partition_point(|knot| knot.0 <= t);
+    match (right.checked_sub(1).map(|left| knots[left]), knots.get(right)) {
+        (Some((t0, y0)), Some(&(t1, y1))) => y0 + (y1 - y0) * (t - t0) / (t1 - t0),
+        (Some((_, y)), None) => y,
+        (None, Some(&(_, y))) => y,
+        (None, None) => 0.0,
+    }
+}

@@ -1,0 +1,113 @@
+//! `notchwright plan`: the filter that meets the brief, or the nearest.
+
+use super::args::Plan as Arguments;
+use super::error::CliError;
+use super::table::{Table, wrapped};
+use super::{Ended, job, print_answer, single_file};
+use crate::analysis::Analysis;
+use crate::plan::{Design, Plan};
+
+/// Designs, writes plan and netlist where asked, prints the plan.
+pub(super) fn run(arguments: &Arguments) -> Result<Ended, CliError> {
+    for out in [&arguments.out, &arguments.netlist].into_iter().flatten() {
+        single_file::check(out)?;
+    }
+    let (brief, stock) = job::read_brief(&arguments.line)?;
+    let analysis: Analysis = job::read_yaml(&arguments.analysis)?;
+    let plan = job::plan(&analysis, &arguments.line, &brief, &stock)?;
+    if let Some(out) = &arguments.out {
+        single_file::write(out, &job::yaml_text("plan", &plan))?;
+    }
+    if let Some(out) = &arguments.netlist {
+        single_file::write(out, &job::netlist_text(&plan))?;
+    }
+    print_answer(arguments.json, &plan, || text(&plan));
+    Ok(Ended::met(plan.design.met))
+}
+
+/// The plan for people: verdict, parts, predictions, trims, alternatives.
+pub(super) fn text(plan: &Plan) -> String {
+    let design = &plan.design;
+    let builds = &design.builds;
+    let mut text = wrapped(
+        "",
+        &if design.met {
+            format!(
+                "Brief met by {:.1} % of {} builds: {}.",
+                builds.meeting_pct, builds.count, design.summary
+            )
+        } else {
+            format!(
+                "Brief not met; the nearest is: {} (met by {:.1} % of {} builds).",
+                design.summary, builds.meeting_pct, builds.count
+            )
+        },
+    );
+    for obstacle in &plan.obstacles {
+        text += &wrapped("  In the way  ", obstacle);
+    }
+    text += &format!("\n{}\n{}\n{}", parts(design), predictions(design), keep(design));
+    text.push('\n');
+    if design.trims.is_empty() && !design.circuit.parts.is_empty() {
+        text += &wrapped("  Trim        ", "none needed");
+    }
+    for trim in &design.trims {
+        text += &wrapped(&format!("  Trim {}      ", trim.step), &trim.instruction);
+    }
+    for other in &plan.alternatives {
+        let met = if other.met { "meets" } else { "misses" };
+        text += &wrapped(
+            "  Otherwise   ",
+            &format!("{}: {met} the brief in {:.1} % of builds", other.summary, other.builds.meeting_pct),
+        );
+    }
+    for note in &plan.notes {
+        text += &wrapped("  Note        ", note);
+    }
+    text
+}
+
+fn parts(design: &Design) -> String {
+    let mut table = Table::new(&["Part", "Value", "Tolerance", "Series R", "Price"]);
+    for part in &design.circuit.parts {
+        table.row([
+            part.reference.clone(),
+            part.value.clone(),
+            format!("± {} %", part.tolerance_pct),
+            if part.series_resistance_ohm >= 0.1 {
+                format!("{:.1} Ω", part.series_resistance_ohm)
+            } else {
+                "–".to_owned()
+            },
+            part.price.map_or("–".to_owned(), |price| format!("{price:.2}")),
+        ]);
+    }
+    table.lines()
+}
+
+fn predictions(design: &Design) -> String {
+    let mut table = Table::new(&["Order", "Frequency", "Asked", "Nominal", "95 % of builds"]);
+    for order in &design.predicted {
+        table.row([
+            order.order.to_string(),
+            format!("{:.3} Hz", order.frequency_hz),
+            order.target_db.map_or("–".to_owned(), |target| format!("{target:.1} dB")),
+            format!("{:.1} dB", order.reduction_db),
+            format!("{:.1} dB", order.reduction_worst_db),
+        ]);
+    }
+    table.lines()
+}
+
+fn keep(design: &Design) -> String {
+    let mut table = Table::new(&["Keep band", "Allowed", "Nominal", "95 % of builds"]);
+    for band in &design.keep {
+        table.row([
+            format!("{} to {} Hz", band.from_hz, band.to_hz),
+            format!("{} dB", band.allowed_db),
+            format!("{:.2} dB", band.loss_db),
+            format!("{:.2} dB", band.loss_worst_db),
+        ]);
+    }
+    table.lines()
+}

@@ -1,0 +1,76 @@
+//! `notchwright run`: the whole job, from recording to report.
+
+use serde::Serialize;
+
+use super::args::Run;
+use super::error::CliError;
+use super::folder::OutFolder;
+use super::{Ended, analyse, job, plan, print_answer, simulate};
+use crate::analysis::Analysis;
+use crate::plan::Plan;
+use crate::report;
+use crate::simulation::{Simulation, Start};
+
+/// What a run found, planned and measured; the later ones are missing where nothing hums.
+#[derive(Debug, Serialize)]
+struct Answer<'a> {
+    analysis: &'a Analysis,
+    plan: Option<&'a Plan>,
+    simulation: Option<&'a Simulation>,
+}
+
+/// The files that this command writes into its folder.
+const FILES: [&str; 8] = [
+    "analysis.yaml",
+    "plan.yaml",
+    "netlist.txt",
+    "parts.csv",
+    "simulation.yaml",
+    "filtered.wav",
+    "removed.wav",
+    "report.html",
+];
+
+/// Analyses, plans, simulates and reports; fills the folder.
+pub(super) fn run(arguments: &Run) -> Result<Ended, CliError> {
+    let names: Vec<&str> = FILES.into_iter().chain(report::CHART_NAMES).collect();
+    let mut folder = OutFolder::check(&arguments.out, &names)?;
+    let (brief, stock) = job::read_brief(&arguments.line)?;
+    let mut capture = job::open_capture(&arguments.capture, &arguments.reading)?;
+
+    let analysed = job::analyse(std::slice::from_mut(&mut capture), &arguments.reading, Some(&brief))?;
+    if !analysed.analysis.mains.found {
+        folder.open()?;
+        folder.write("analysis.yaml", &job::yaml_text("analysis", &analysed.analysis))?;
+        folder.finish(true)?;
+        let answer = Answer { analysis: &analysed.analysis, plan: None, simulation: None };
+        print_answer(arguments.json, &answer, || {
+            format!("{}\nNothing to plan or simulate.\n", analyse::text(&analysed.analysis))
+        });
+        return Ok(Ended::Missed);
+    }
+    let planned = job::plan(&analysed.analysis, &arguments.line, &brief, &stock)?;
+
+    folder.open()?;
+    let heard = job::simulate(&mut capture, &planned, &analysed, Start::Settled, &mut folder)?;
+    folder.write("analysis.yaml", &job::yaml_text("analysis", &analysed.analysis))?;
+    folder.write("plan.yaml", &job::yaml_text("plan", &planned))?;
+    folder.write("netlist.txt", &job::netlist_text(&planned))?;
+    folder.write("simulation.yaml", &job::yaml_text("simulation", &heard.simulation))?;
+    job::report(&mut capture, &analysed, &planned, &heard, &mut folder)?;
+    folder.finish(true)?;
+
+    let answer =
+        Answer { analysis: &analysed.analysis, plan: Some(&planned), simulation: Some(&heard.simulation) };
+    print_answer(arguments.json, &answer, || {
+        let report = arguments.out.join("report.html");
+        format!(
+            "{}\n{}\n{}\nThe report: {}\n",
+            analyse::text(&analysed.analysis),
+            plan::text(&planned),
+            simulate::text(&heard.simulation),
+            report.display()
+        )
+    });
+    Ok(Ended::met(planned.design.met && heard.simulation.met))
+}

