@@ -34,7 +34,8 @@ pub(super) fn text(analysis: &Analysis) -> String {
     let mut text = verdict(analysis);
     text.push('\n');
     for capture in &analysis.captures {
-        let scale = capture.full_scale_v.map_or(String::new(), |volts| format!(", full scale {volts} V"));
+        let scale =
+            capture.full_scale_v.map_or(String::new(), |volts| format!(", full scale {}", job::volts(volts)));
         text += &wrapped(
             "  Recording   ",
             &format!(
@@ -53,7 +54,11 @@ pub(super) fn text(analysis: &Analysis) -> String {
     if let (Some(spread), Some(floor)) = (mains.spread_hz, mains.spread_floor_hz) {
         text += &wrapped(
             "  Wander      ",
-            &format!("± {spread:.4} Hz for 95 % of the time (noise alone would show ± {floor:.4} Hz)"),
+            &format!(
+                "{} for 95 % of the time (noise alone would show {})",
+                job::deviation(spread),
+                job::deviation(floor)
+            ),
         );
     }
     if mains.found {
@@ -87,12 +92,12 @@ fn verdict(analysis: &Analysis) -> String {
         return "No mains hum found.\n".to_owned();
     };
     let nominal = mains.nominal_hz.map_or(String::new(), |nominal| format!("{nominal} Hz "));
-    let error = mains.frequency_se_hz.map_or(String::new(), |se| format!(" ± {se:.5}"));
+    let error = mains.frequency_se_hz.map_or(String::new(), |se| format!(" ({})", job::deviation(se)));
     let volts = strongest.rms_v.map_or(String::new(), |volts| format!(", {} rms", job::volts(volts)));
     wrapped(
         "",
         &format!(
-            "Hum found: {nominal}mains at {frequency_hz:.4}{error} Hz; strongest is order {} ({:.1} dBFS{volts}).",
+            "Hum found: {nominal}mains at {frequency_hz:.5} Hz{error}; strongest is order {} ({:.1} dBFS{volts}).",
             strongest.order, strongest.level_dbfs
         ),
     )

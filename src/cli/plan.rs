@@ -55,10 +55,9 @@ pub(super) fn text(plan: &Plan) -> String {
         text += &wrapped(&format!("  Trim {}      ", trim.step), &trim.instruction);
     }
     for other in &plan.alternatives {
-        let met = if other.met { "meets" } else { "misses" };
         text += &wrapped(
             "  Otherwise   ",
-            &format!("{}: {met} the brief in {:.1} % of builds", other.summary, other.builds.meeting_pct),
+            &format!("{}: {:.1} % of builds meet the brief", other.summary, other.builds.meeting_pct),
         );
     }
     for note in &plan.notes {

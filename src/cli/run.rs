@@ -5,6 +5,7 @@ use serde::Serialize;
 use super::args::Run;
 use super::error::CliError;
 use super::folder::OutFolder;
+use super::table::wrapped;
 use super::{Ended, analyse, job, plan, print_answer, simulate};
 use crate::analysis::Analysis;
 use crate::plan::Plan;
@@ -63,14 +64,28 @@ pub(super) fn run(arguments: &Run) -> Result<Ended, CliError> {
     let answer =
         Answer { analysis: &analysed.analysis, plan: Some(&planned), simulation: Some(&heard.simulation) };
     print_answer(arguments.json, &answer, || {
-        let report = arguments.out.join("report.html");
         format!(
-            "{}\n{}\n{}\nThe report: {}\n",
+            "{}\n{}\n{}\n{}\nThe report: {}\n",
+            verdict(&planned, &heard.simulation),
             analyse::text(&analysed.analysis),
             plan::text(&planned),
             simulate::text(&heard.simulation),
-            report.display()
+            arguments.out.join("report.html").display()
         )
     });
     Ok(Ended::met(planned.design.met && heard.simulation.met))
+}
+
+/// One sentence: whether the brief is met, what the filter takes and what it costs.
+fn verdict(plan: &Plan, heard: &Simulation) -> String {
+    let asked = heard.residual.iter().filter(|order| order.target_db.is_some());
+    let least_db = asked.map(|order| order.reduction_db).min_by(f64::total_cmp);
+    let loss_db = heard.keep.iter().map(|band| band.loss_db.abs()).max_by(f64::total_cmp);
+    let met = if plan.design.met && heard.met { "Met" } else { "Not met" };
+    let takes = least_db.map_or("has no hum to take off".to_owned(), |db| {
+        format!("takes {db:.1} dB or more off the hum asked for")
+    });
+    let costs =
+        loss_db.map_or(String::new(), |db| format!(" and costs the wanted signal {db:.2} dB at most"));
+    wrapped("", &format!("{met}: {}; it {takes}{costs}.", plan.design.summary))
 }

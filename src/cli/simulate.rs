@@ -11,6 +11,9 @@ use crate::simulation::{Simulation, Start};
 /// The files that this command writes into its folder.
 const FILES: [&str; 3] = ["filtered.wav", "removed.wav", "simulation.yaml"];
 
+/// Orders shown as text, those that the brief asks for always; the files hold all.
+const SHOWN_ORDERS: usize = 12;
+
 /// Analyses the recording, sends it through the plan's filter, prints what is left.
 pub(super) fn run(arguments: &Simulate) -> Result<Ended, CliError> {
     let mut folder = OutFolder::check(&arguments.out, &FILES)?;
@@ -40,7 +43,13 @@ pub(super) fn text(simulation: &Simulation) -> String {
         text += &wrapped("  Missed      ", miss);
     }
     let mut table = Table::new(&["Order", "Before", "After", "Reduction", "Predicted"]);
-    for order in &simulation.residual {
+    let (asked, others): (Vec<_>, Vec<_>) =
+        simulation.residual.iter().partition(|order| order.target_db.is_some());
+    let shown = SHOWN_ORDERS.saturating_sub(asked.len());
+    let hidden = others.len().saturating_sub(shown);
+    let mut rows: Vec<_> = asked.into_iter().chain(others.into_iter().take(shown)).collect();
+    rows.sort_by_key(|order| order.order);
+    for order in rows {
         table.row([
             order.order.to_string(),
             format!("{:.1} dBFS", order.before_dbfs),
@@ -49,15 +58,19 @@ pub(super) fn text(simulation: &Simulation) -> String {
             format!("{:.1} dB", order.predicted_db),
         ]);
     }
-    text += &format!("\n{}\n", table.lines());
+    text += &format!("\n{}", table.lines());
+    if hidden > 0 {
+        text += &format!("  and {hidden} more (--json and simulation.yaml have them all)\n");
+    }
+    text.push('\n');
     for band in &simulation.keep {
         let measured = band
             .measured_db
-            .map_or(String::new(), |loss| format!(", {loss:.2} dB of its power on the samples"));
+            .map_or(String::new(), |loss| format!("; {loss:.2} dB of the power in it, on the samples"));
         text += &wrapped(
             "  Kept        ",
             &format!(
-                "{} to {} Hz loses {:.2} dB at most of {} dB allowed{measured}",
+                "{} to {} Hz loses {:.2} dB at most, {} dB allowed{measured}",
                 band.from_hz, band.to_hz, band.loss_db, band.allowed_db
             ),
         );

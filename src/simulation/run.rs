@@ -261,9 +261,11 @@ impl Job<'_> {
     }
 
     fn residual(&self, before: &OrderLevel, after: &OrderLevel) -> Residual {
-        let at_noise_floor = after.over_floor_db < NOISE_FLOOR_DB && !changes(after);
-        let after_dbfs = if at_noise_floor { upper_bound_dbfs(after) } else { rms_dbfs(after) };
-        let before_dbfs = rms_dbfs(before);
+        let by_power = changes_more(after, before);
+        let reading = |level: &OrderLevel| if by_power { level.mean_power_dbfs } else { level.level_dbfs };
+        let at_noise_floor = after.over_floor_db < NOISE_FLOOR_DB && !by_power;
+        let after_dbfs = if at_noise_floor { upper_bound_dbfs(after) } else { reading(after) };
+        let before_dbfs = reading(before);
         let asked = is_asked_for(before.order, self.brief, self.design);
         Residual {
             order: before.order,
@@ -470,11 +472,17 @@ impl Strip<'_> {
     }
 }
 
-/// RMS of a line. Along the track its phasors are summed before they are squared:
-/// behind a notch, which turns the phase where the line crosses it, that would
-/// hide what is left. There the mean power of shorter stretches is the reading.
-fn rms_dbfs(level: &OrderLevel) -> f64 {
-    if changes(level) { level.mean_power_dbfs } else { level.level_dbfs }
+/// Whether a line is to be read by its mean power, before and after alike.
+///
+/// Along the track its phasors are summed before they are squared: behind a notch,
+/// which turns the phase where the line crosses it, that would hide what is left.
+/// There the mean power of shorter stretches is the reading. What stood over the
+/// mean phasor before already (a note beside the line, a pump switched on) is no
+/// reason: the sum along the track leaves it out of both.
+fn changes_more(after: &OrderLevel, before: &OrderLevel) -> bool {
+    let excess_db = |level: &OrderLevel| level.mean_power_dbfs - level.level_dbfs;
+    let noise_db = 0.1 + 6.0 * after.level_se_db;
+    changes(after) && excess_db(after) > excess_db(before) + noise_db
 }
 
 /// Whether the line's power stands over its mean phasor's by more than noise explains.
@@ -492,7 +500,7 @@ fn changes(level: &OrderLevel) -> bool {
 /// distribution).
 fn upper_bound_dbfs(level: &OrderLevel) -> f64 {
     let power = |dbfs: f64| 10_f64.powf(dbfs / 10.0);
-    10.0 * (power(rms_dbfs(level)) + 3.0 * power(level.floor_dbfs)).log10()
+    10.0 * (power(level.level_dbfs) + 3.0 * power(level.floor_dbfs)).log10()
 }
 
 /// Power of a band before and after, where it holds signal.
