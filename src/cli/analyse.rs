@@ -10,6 +10,9 @@ use crate::plan::LineBrief;
 /// Harmonics shown as text; the files hold all.
 const SHOWN_HARMONICS: usize = 12;
 
+/// Folded orders shown as text.
+const SHOWN_FOLDS: usize = 4;
+
 /// Analyses, writes the analysis where asked, prints it.
 pub(super) fn run(arguments: &Analyse) -> Result<Ended, CliError> {
     if let Some(out) = &arguments.out {
@@ -71,6 +74,15 @@ pub(super) fn text(analysis: &Analysis) -> String {
             &format!(
                 "{} Hz supply at {:.3} Hz, {:.1} dBFS",
                 supply.nominal_hz, supply.frequency_hz, supply.level_dbfs
+            ),
+        );
+    }
+    for folded in analysis.folding.iter().take(SHOWN_FOLDS) {
+        text += &wrapped(
+            "  Folded      ",
+            &format!(
+                "order {} ({:.2} Hz) would appear at {:.2} Hz: {}",
+                folded.order, folded.frequency_hz, folded.appears_at_hz, folded.remark
             ),
         );
     }
