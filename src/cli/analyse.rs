@@ -65,7 +65,10 @@ pub(super) fn text(analysis: &Analysis) -> String {
         );
     }
     if mains.found {
-        text += &wrapped("  Confidence  ", &format!("{:.4}", mains.confidence));
+        text += &wrapped(
+            "  Confidence  ",
+            &format!("{:.2} of 1, and 0.5 counts as found (a score, not a probability)", mains.confidence),
+        );
     }
     text += &harmonics(analysis);
     for supply in &analysis.other_supplies {

@@ -38,10 +38,10 @@ pub(super) fn run(arguments: &Run) -> Result<Ended, CliError> {
     let mut folder = OutFolder::check(&arguments.out, &names)?;
     let (brief, stock) = job::read_brief(&arguments.line)?;
     let mut capture = job::open_capture(&arguments.capture, &arguments.reading)?;
+    folder.open()?;
 
     let analysed = job::analyse(std::slice::from_mut(&mut capture), &arguments.reading, Some(&brief))?;
     if !analysed.analysis.mains.found {
-        folder.open()?;
         folder.write("analysis.yaml", &job::yaml_text("analysis", &analysed.analysis))?;
         folder.finish(true)?;
         let answer = Answer { analysis: &analysed.analysis, plan: None, simulation: None };
@@ -51,8 +51,6 @@ pub(super) fn run(arguments: &Run) -> Result<Ended, CliError> {
         return Ok(Ended::Missed);
     }
     let planned = job::plan(&analysed.analysis, &arguments.line, &brief, &stock)?;
-
-    folder.open()?;
     let heard = job::simulate(&mut capture, &planned, &analysed, Start::Settled, &mut folder)?;
     folder.write("analysis.yaml", &job::yaml_text("analysis", &analysed.analysis))?;
     folder.write("plan.yaml", &job::yaml_text("plan", &planned))?;

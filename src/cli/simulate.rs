@@ -19,9 +19,9 @@ pub(super) fn run(arguments: &Simulate) -> Result<Ended, CliError> {
     let mut folder = OutFolder::check(&arguments.out, &FILES)?;
     let plan: Plan = job::read_yaml(&arguments.plan)?;
     let mut capture = job::open_capture(&arguments.capture, &arguments.reading)?;
+    folder.open()?;
     let analysed = job::analyse(std::slice::from_mut(&mut capture), &arguments.reading, Some(&plan.brief))?;
     let start = if arguments.from_rest { Start::AtRest } else { Start::Settled };
-    folder.open()?;
     let heard = job::simulate(&mut capture, &plan, &analysed, start, &mut folder)?;
     folder.write("simulation.yaml", &job::yaml_text("simulation", &heard.simulation))?;
     folder.finish(false)?;
