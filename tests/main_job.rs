@@ -9,7 +9,7 @@ use std::process::Output;
 use assert_cmd::Command;
 use serde_json::Value;
 
-const FILES: [&str; 12] = [
+const FILES: [&str; 13] = [
     "analysis.yaml",
     "plan.yaml",
     "netlist.txt",
@@ -22,6 +22,7 @@ const FILES: [&str; 12] = [
     "response.svg",
     "track.svg",
     "harmonics.svg",
+    "schematic.svg",
 ];
 
 fn notchwright(arguments: &[&str]) -> Output {

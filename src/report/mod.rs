@@ -10,6 +10,7 @@ mod charts;
 mod excerpt;
 mod page;
 mod partslist;
+mod schematic;
 mod verdict;
 mod wav;
 mod wording;
@@ -17,6 +18,7 @@ mod wording;
 pub use cautions::{CAUTIONS, Caution};
 pub use excerpt::{Excerpt, Recordings};
 pub use partslist::parts_csv;
+pub use schematic::schematic_svg;
 
 use crate::analysis::{Analysis, Spectrum};
 use crate::plan::Plan;
@@ -75,14 +77,15 @@ pub enum ReportError {
 }
 
 /// The names of the files that [`charts`] returns.
-pub const CHART_NAMES: [&str; 4] = ["spectrum.svg", "response.svg", "track.svg", "harmonics.svg"];
+pub const CHART_NAMES: [&str; 5] =
+    ["spectrum.svg", "response.svg", "track.svg", "harmonics.svg", "schematic.svg"];
 
 /// The charts and the schematic: file name and SVG of each.
 pub fn charts(material: &Material) -> Vec<(&'static str, String)> {
     charts::all(material, charts::Size::WIDE)
         .into_iter()
         .map(|chart| (chart.file, chart.svg))
-        .chain(Some(schematic(material.plan)).filter(|svg| !svg.is_empty()).map(|svg| ("schematic.svg", svg)))
+        .chain([("schematic.svg", schematic_svg(&material.plan.design.circuit))])
         .collect()
 }
 
@@ -92,10 +95,4 @@ pub fn charts(material: &Material) -> Vec<(&'static str, String)> {
 /// [`ReportError::Template`] when template and data do not fit.
 pub fn page(material: &Material) -> Result<String, ReportError> {
     page::compose(material)
-}
-
-/// The schematic of the plan's circuit; empty until there is something that draws
-/// one, and then neither page nor files hold a schematic.
-fn schematic(_plan: &Plan) -> String {
-    String::new()
 }

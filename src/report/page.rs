@@ -50,7 +50,7 @@ fn view(material: &Material) -> Value {
         analysis_notes => material.analysis.notes.clone(),
         summary => design.summary.clone(),
         brief => serialised(brief(material)),
-        schematic => inline(&super::schematic(plan), "Schematic of the filter with source and load", true),
+        schematic => inline(&super::schematic_svg(&plan.design.circuit), "Schematic of the filter with source and load", true),
         sections => serialised(sections(design)),
         parts => serialised(parts(material)),
         parts_total => partslist::total(&design.circuit.parts).map(|sum| number(sum, 2)),
