@@ -82,8 +82,9 @@ fn rehearsal_room() -> (Analysis, LineBrief) {
 fn example_room() -> (Analysis, LineBrief) {
     let brief = LineBrief {
         load: Load { resistance_ohm: 10e3, capacitance_f: 1e-9 },
-        keep: vec![KeepBand { from_hz: 40.0, to_hz: 15e3, allowed_db: 1.5 }],
-        orders: Some(vec![1, 3, 5]),
+        keep: vec![KeepBand { from_hz: 80.0, to_hz: 15e3, allowed_db: 3.0 }],
+        orders: Some(vec![1, 2, 3]),
+        guard_hz: 15.0,
         temperature_from_c: 15.0,
         temperature_to_c: 30.0,
         ..rehearsal_room().1

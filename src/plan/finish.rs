@@ -19,18 +19,15 @@ pub struct Finished {
     pub trims: Vec<Trim>,
     /// Its sections in figures.
     pub sections: Vec<SectionSummary>,
+    /// Slots whose trims would not lead to the planned values.
+    pub failing: Vec<usize>,
 }
 
 /// Puts the parts into the network and names them.
 ///
 /// References count each letter from the source on: R, C, L, and P for what is
-/// set by turning. `None` where the trims would not lead to the planned values.
-pub fn finished(
-    problem: &Problem,
-    point: &Point,
-    adjustables: &[Adjustable],
-    task: &Task,
-) -> Option<Finished> {
+/// set by turning.
+pub fn finished(problem: &Problem, point: &Point, adjustables: &[Adjustable], task: &Task) -> Finished {
     let assembly = problem.assembly;
     let mut parts: Vec<Part> = Vec::new();
     let mut slot_branch: Vec<Branch> = vec![Branch::Part(usize::MAX); assembly.slots.len()];
@@ -89,11 +86,12 @@ pub fn finished(
         .collect();
     let circuit = Circuit { source: assembly.network.source, load: assembly.network.load, sections, parts };
     let trims = trims(&circuit, &adjusted, task);
-    if !trims_hold(&circuit, &trims) {
-        return None;
-    }
+    let failing = failing(&circuit, &trims)
+        .into_iter()
+        .filter_map(|part| adjusted.iter().find(|(index, _)| *index == part).map(|(_, a)| a.slot))
+        .collect();
     let sections = summaries(problem, &circuit, &slot_branch, task);
-    Some(Finished { circuit, trims, sections })
+    Finished { circuit, trims, sections, failing }
 }
 
 fn joined(mut branches: Vec<Branch>, in_series: bool) -> Branch {
@@ -187,23 +185,27 @@ fn reading_frequency(circuit: &Circuit, part: usize, adjustable: &Adjustable, li
             frequency_hz *= ((fixed_si + best_si) / (fixed_si + adjustable.planned_si)).powf(0.3);
         }
     }
-    (100.0 * frequency_hz).round() / 100.0
+    // Far from the line there is no null to read: 0 Hz marks it as no trim.
+    let far = (frequency_hz / line_hz - 1.0).abs() > 0.05;
+    if far { 0.0 } else { (100.0 * frequency_hz).round() / 100.0 }
 }
 
-/// Whether the trims, gone through on nominal parts, end where they were planned:
-/// within a tenth of each range. Where a null is no clear one they do not, and the
-/// procedure would put the filter out of tune instead of into it.
-fn trims_hold(circuit: &Circuit, trims: &[Trim]) -> bool {
+/// Parts whose trims, gone through on nominal parts, end elsewhere than planned by
+/// more than a tenth of their range, or whose reading lies beyond 5 % of any line.
+/// There the null is no clear one, and the procedure would put the filter out of
+/// tune instead of into it.
+fn failing(circuit: &Circuit, trims: &[Trim]) -> Vec<usize> {
     let mut values = circuit.values();
     builds::apply_trims(circuit, trims, &mut values, |_| 0.0);
-    trims.iter().all(|trim| {
-        circuit.parts.iter().zip(&values).filter(|(part, _)| part.reference == trim.part).all(
-            |(part, value)| {
-                let planned_si = part.setting_ohm.unwrap_or(part.value_si);
-                (value.value_si - planned_si).abs() <= 0.1 * (trim.to_si - trim.from_si)
-            },
-        )
-    })
+    let planned = circuit.values();
+    (0..circuit.parts.len())
+        .filter(|&part| {
+            trims.iter().filter(|trim| trim.part == circuit.parts[part].reference).any(|trim| {
+                let off_si = (values[part].value_si - planned[part].value_si).abs();
+                trim.frequency_hz <= 0.0 || off_si > 0.1 * (trim.to_si - trim.from_si)
+            })
+        })
+        .collect()
 }
 
 fn summaries(
@@ -294,6 +296,9 @@ fn seen_ohm(circuit: &Circuit, index: usize, frequency_hz: f64) -> (f64, f64) {
     (source.norm(), load.norm())
 }
 
+/// Share of builds that must meet the brief, percent.
+const ENOUGH_PCT: f64 = 95.0;
+
 /// The design with its predictions and its builds.
 pub fn design(
     finished: Finished,
@@ -302,7 +307,7 @@ pub fn design(
     count: u32,
     seed: u64,
 ) -> (Design, f64) {
-    let Finished { circuit, trims, sections } = finished;
+    let Finished { circuit, trims, sections, .. } = finished;
     let outcome = builds::judge(&circuit, &trims, task, temperature_c, count, seed);
     let measured: Vec<f64> = task.orders.iter().map(|order| order.measured_hz).collect();
     let mut reductions = vec![0.0; measured.len()];
@@ -348,7 +353,7 @@ pub fn design(
     let flat_loss_db = (0..task.keep.len()).flat_map(kept).fold(f64::INFINITY, f64::min);
     let price = circuit.parts.iter().map(|part| part.price).sum::<Option<f64>>();
     let design = Design {
-        met: outcome.meeting_pct >= 95.0,
+        met: outcome.meeting_pct >= ENOUGH_PCT,
         summary: summary(&circuit, &trims),
         sections,
         circuit,
@@ -360,6 +365,20 @@ pub fn design(
         price,
     };
     (design, outcome.worst_miss)
+}
+
+/// The design with another number of builds.
+pub fn rejudged(mut design: Design, task: &Task, temperature_c: (f64, f64), count: u32, seed: u64) -> Design {
+    let outcome = builds::judge(&design.circuit, &design.trims, task, temperature_c, count, seed);
+    for (order, &worst_db) in design.predicted.iter_mut().zip(&outcome.reduction_worst_db) {
+        order.reduction_worst_db = worst_db;
+    }
+    for (band, &worst_db) in design.keep.iter_mut().zip(&outcome.loss_worst_db) {
+        band.loss_worst_db = worst_db;
+    }
+    design.met = outcome.meeting_pct >= ENOUGH_PCT;
+    design.builds = Builds { count, seed, meeting_pct: outcome.meeting_pct, band: Vec::new() };
+    design
 }
 
 /// `notched low-pass, 1 coil, 5 parts, no trim`.

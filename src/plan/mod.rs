@@ -6,6 +6,7 @@ mod builds;
 mod chance;
 mod design;
 mod finish;
+mod nearest;
 mod optimise;
 mod requirements;
 mod round;
@@ -18,8 +19,10 @@ pub use brief::{BriefError, Centre, KeepBand, LineBrief, ReductionTarget};
 pub use builds::build;
 pub use design::*;
 pub use requirements::{OrderTask, Task, judged_intervals};
+
 pub use window::{largest_q_for_detuning, largest_q_of_bridged_t, largest_q_of_trap, least_q_for_loss};
 
+use requirements::Lean;
 use search::{Made, Search};
 use shelf::Shelf;
 
@@ -106,8 +109,12 @@ pub fn plan(
         temperature_c: (brief.temperature_from_c, brief.temperature_to_c),
         builds: options.builds,
         seed: options.seed,
+        lean: Lean::Even,
     };
-    let made = search.run(progress);
+    let mut made = search.run(progress);
+    if made.first().is_some_and(|made| !made.design.met) {
+        made = search.run_leaning(made, progress);
+    }
     let plan = assembled(&search, brief, made, options).ok_or(PlanError::NoNetwork)?;
     progress(1.0);
     Ok(plan)
@@ -120,24 +127,20 @@ fn held(stock: &Stock) -> String {
 /// The winner with its alternatives, windows and band.
 fn assembled(search: &Search, brief: &LineBrief, made: Vec<Made>, options: &PlanOptions) -> Option<Plan> {
     let task = search.task;
-    let mut made = made.into_iter();
-    let winner = made.next()?;
-    let mut alternatives: Vec<Design> = Vec::new();
-    let key = |design: &Design| -> (Vec<String>, usize) {
-        let kinds = design.sections.iter().map(|section| section.kind.clone()).collect();
-        (kinds, design.circuit.parts.len())
-    };
-    for other in made {
-        let told = std::iter::once(&winner.design).chain(&alternatives);
-        if told.into_iter().all(|design| key(design) != key(&other.design)) {
-            alternatives.push(other.design);
-        }
-        if alternatives.len() == options.alternatives {
-            break;
-        }
+    let mut made = told(made, options.alternatives + 1);
+    for made in &mut made {
+        made.design = search.with_all_builds(made.design.clone());
     }
-    let q_windows = window::windows(task, search.shelf.stock(), &winner.design, search.temperature_c);
-    let mut design = winner.design;
+    // Of a few builds some designs seem to meet the brief, or to miss it.
+    made.sort_by_key(|made| !made.design.met);
+    let obstacles = match made.first()?.design.met {
+        true => Vec::new(),
+        false => nearest::obstacles(&made, task, search.shelf.stock(), search.temperature_c),
+    };
+    let mut told = made.into_iter().map(|made| made.design);
+    let mut design = told.next()?;
+    let q_windows = window::windows(task, search.shelf.stock(), &design, search.temperature_c);
+    let alternatives = told.collect();
     design.builds.band = builds::band(
         &design.circuit,
         &design.trims,
@@ -154,10 +157,31 @@ fn assembled(search: &Search, brief: &LineBrief, made: Vec<Made>, options: &Plan
         design_spread_hz: task.spread_hz,
         centre_hz: task.centre_hz,
         q_windows,
-        obstacles: Vec::new(),
+        obstacles,
         alternatives,
         notes: task.notes.clone(),
     })
+}
+
+/// The first `most` that differ in kinds or in number of parts, in order; where those
+/// are fewer, others that differ in values only.
+fn told(made: Vec<Made>, most: usize) -> Vec<Made> {
+    let key = |made: &Made| -> (Vec<String>, usize) {
+        let kinds = made.design.sections.iter().map(|section| section.kind.clone()).collect();
+        (kinds, made.design.circuit.parts.len())
+    };
+    let mut told: Vec<Made> = Vec::new();
+    let mut others: Vec<Made> = Vec::new();
+    for made in made {
+        let differs = told.iter().all(|other| key(other) != key(&made));
+        if differs && told.len() < most { told.push(made) } else { others.push(made) }
+    }
+    for made in others {
+        if told.len() < most && told.iter().all(|other| other.design.circuit != made.design.circuit) {
+            told.push(made);
+        }
+    }
+    told
 }
 
 /// Frequencies at which the band of builds is told: 48 an octave near the lines,

@@ -248,6 +248,48 @@ fn keep_scale_db(allowed_db: f64) -> f64 {
     allowed_db / 5.0
 }
 
+/// What the search holds to first where not all can be had.
+#[derive(Debug, Clone, Copy, PartialEq, Eq)]
+pub enum Lean {
+    /// Neither: both miss alike.
+    Even,
+    /// The keep bands are held, and the hum goes down as far as that allows.
+    Signal,
+    /// The targets are met, and the loss is the least that this costs.
+    Hum,
+}
+
+/// A miss of the side leant to weighs this many times as much.
+const LEANING: f64 = 20.0;
+
+/// Share of the loss allowed that may be flat, where the signal is held to first:
+/// what goes down with the hum brings nobody nearer, and the rest is for the notches.
+const FLAT_SHARE: f64 = 1.0 / 3.0;
+/// Share of the loss allowed that is planned with (and of the target that is asked
+/// for); the rest is for what more builds show.
+const BUILDS_SHARE: f64 = 0.95;
+/// Flat is the loss this far from every line, as a ratio of frequencies.
+const FAR: f64 = 2.0;
+
+impl Lean {
+    /// The sample as this leaning has it, among lines at `lines_hz`.
+    pub fn weighed(self, mut sample: Sample, lines_hz: &[f64]) -> Sample {
+        let far = |line_hz: &f64| !(1.0 / FAR..=FAR).contains(&(sample.frequency_hz / line_hz));
+        match &mut sample.rule {
+            Rule::Reduce { target_db, .. } if self == Self::Hum => {
+                *target_db /= BUILDS_SHARE;
+                sample.scale_db /= LEANING;
+            }
+            Rule::Keep { allowed_db, .. } if self == Self::Signal => {
+                *allowed_db *= if lines_hz.iter().all(far) { FLAT_SHARE } else { BUILDS_SHARE };
+                sample.scale_db /= LEANING;
+            }
+            _ => {}
+        }
+        sample
+    }
+}
+
 /// All rules of a task at their frequencies.
 pub fn samples(task: &Task, density: Density) -> Vec<Sample> {
     let mut samples = Vec::new();

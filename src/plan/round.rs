@@ -12,12 +12,33 @@ const MANY: usize = 8;
 /// Values rounded between two re-optimisations where there are many.
 const BETWEEN: usize = 6;
 
+/// Where two capacitors side by side may stand for one.
+#[derive(Debug, Clone, Copy, PartialEq, Eq)]
+pub enum Pairs {
+    /// Nowhere: single values of the list.
+    Nowhere,
+    /// In the slots of this freedom.
+    In(usize),
+    /// Everywhere.
+    Everywhere,
+}
+
+impl Pairs {
+    fn allow(self, freedom: usize) -> bool {
+        match self {
+            Self::Nowhere => false,
+            Self::In(only) => only == freedom,
+            Self::Everywhere => true,
+        }
+    }
+}
+
 /// Settles every slot but those in `trimmed`, the coarsest values first, each time
-/// re-optimising what is still free. `pairs` allows two capacitors side by side
-/// where one listed value does not do.
+/// re-optimising what is still free. `pairs` tells where two capacitors side by
+/// side may stand where one listed value does not do.
 ///
 /// `None` where the list offers nothing for a slot.
-pub fn rounded(problem: &Problem, from: &Point, trimmed: &[usize], pairs: bool) -> Option<Point> {
+pub fn rounded(problem: &Problem, from: &Point, trimmed: &[usize], pairs: Pairs) -> Option<Point> {
     let assembly = problem.assembly;
     let mut order: Vec<usize> = (0..assembly.freedoms.len()).collect();
     // Capacitors come in coarse steps, so the resistors after them can make up
@@ -37,7 +58,7 @@ pub fn rounded(problem: &Problem, from: &Point, trimmed: &[usize], pairs: bool) 
         }
         let mut next: Vec<Point> = Vec::new();
         for point in &beam {
-            for choice in choices(problem, point, &slots, pairs) {
+            for choice in choices(problem, point, &slots, pairs.allow(freedom)) {
                 let mut trial = point.clone();
                 for (&slot, made) in slots.iter().zip(choice) {
                     trial.made[slot] = Some(made);

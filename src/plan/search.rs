@@ -5,10 +5,11 @@ use rayon::prelude::*;
 use super::assembly::Assembly;
 use super::chance::variations;
 use super::design::Design;
-use super::finish::{design, finished};
+use super::finish::{design, finished, rejudged};
+use super::nearest;
 use super::optimise::{Point, Problem, QUICK, THOROUGH, Variation};
-use super::requirements::{COARSE, Rule, Sample, Task, samples};
-use super::round::rounded;
+use super::requirements::{COARSE, Lean, Rule, Sample, Task, samples};
+use super::round::{Pairs, rounded};
 use super::shelf::Shelf;
 use super::trim::adjustable;
 use crate::network::kinds::{Draft, KINDS, Line, Setting};
@@ -23,6 +24,14 @@ const SIFTING_BUILDS: usize = 3;
 const CHOOSING_BUILDS: usize = 16;
 /// Networks that are made from the list and built.
 const MADE: usize = 10;
+/// The same, in a search that leans to one side.
+const MADE_LEANING: usize = 5;
+/// Networks made before the searches that lean to one side, where all are hopeless.
+const MADE_HOPELESS: usize = 1;
+/// Builds drawn of what does not meet the brief, to tell which is the nearest.
+const RANKING_BUILDS: u32 = 150;
+/// Up to this many values, pairs of capacitors are tried one place at a time.
+const FEW: usize = 5;
 
 /// A network of more free values than this is large: few of them are made.
 const LARGE: usize = 9;
@@ -45,6 +54,8 @@ pub struct Search<'a> {
     pub builds: u32,
     /// Seed of all draws.
     pub seed: u64,
+    /// What it holds to first where not all can be had.
+    pub lean: Lean,
 }
 
 /// A cascade with values, as far as it was sifted.
@@ -76,7 +87,7 @@ impl Candidate {
     }
 
     /// Builds drawn for choosing its values: fewer where each costs much.
-    pub fn choosing_builds(&self) -> usize {
+    fn choosing_builds(&self) -> usize {
         if self.assembly.freedoms.len() > LARGE { CHOOSING_BUILDS / 4 } else { CHOOSING_BUILDS }
     }
 
@@ -111,7 +122,7 @@ impl Search<'_> {
         let sifted = self.sifted(&setting);
         progress(0.3);
         let mut finalists = self.finalists(sifted);
-        if finalists.iter().all(|candidate| candidate.point.worst > 0.0) {
+        if self.lean != Lean::Hum && finalists.iter().all(|candidate| candidate.point.worst > 0.0) {
             finalists.extend(self.partial(&setting));
         }
         progress(0.5);
@@ -120,6 +131,24 @@ impl Search<'_> {
         progress(0.9);
         made.sort_by(better);
         made
+    }
+
+    /// Where nothing meets the brief: the searches that hold to the signal first,
+    /// and to the targets first, put together with what was made; the nearest first.
+    pub fn run_leaning(&self, mut made: Vec<Made>, progress: &mut dyn FnMut(f64)) -> Vec<Made> {
+        for (turn, lean) in [Lean::Signal, Lean::Hum].into_iter().enumerate() {
+            made.extend(Search { lean, ..*self }.run(&mut |_| {}));
+            progress(0.6 + 0.2 * turn as f64);
+        }
+        nearest::sorted(made)
+    }
+
+    /// All builds of a design of which fewer were drawn.
+    pub fn with_all_builds(&self, design: Design) -> Design {
+        match design.builds.count < self.builds {
+            true => rejudged(design, self.task, self.temperature_c, self.builds, self.seed),
+            false => design,
+        }
     }
 
     /// All orders to be reduced.
@@ -187,7 +216,8 @@ impl Search<'_> {
             Rule::Reduce { order, .. } => orders.contains(&self.task.orders[order].order),
             Rule::Keep { .. } => true,
         });
-        all
+        let lines_hz: Vec<f64> = self.task.orders.iter().map(|order| order.centre_hz).collect();
+        all.into_iter().map(|sample| self.lean.weighed(sample, &lines_hz)).collect()
     }
 
     fn loss_hz(&self) -> f64 {
@@ -320,11 +350,15 @@ impl Search<'_> {
             })
         });
         let mut large = 0;
+        let most_large = if self.lean == Lean::Even { LARGE_MADE } else { 1 };
         finalists.retain(|candidate| {
             large += usize::from(candidate.assembly.freedoms.len() > LARGE);
-            candidate.assembly.freedoms.len() <= LARGE || large <= LARGE_MADE
+            candidate.assembly.freedoms.len() <= LARGE || large <= most_large
         });
-        finalists.truncate(MADE);
+        finalists.truncate(if self.lean == Lean::Even { MADE } else { MADE_LEANING });
+        if finalists.iter().all(|candidate| candidate.point.worst > HOPELESS) && self.lean == Lean::Even {
+            finalists.truncate(MADE_HOPELESS);
+        }
         finalists
     }
 
@@ -337,13 +371,22 @@ impl Search<'_> {
         Candidate { point, trimmed, ..candidate }
     }
 
-    /// The candidate made from the list, with single values and with pairs, built.
+    /// The candidate made from the list and built: with single values; where those do
+    /// not meet the brief, with a pair of capacitors in one place; else with pairs all over.
     fn made(&self, candidate: &Candidate) -> Vec<Made> {
         let samples = self.samples_for(&candidate.orders());
         let variations = self.variations(&candidate.assembly, candidate.trimmed, candidate.choosing_builds());
         let problem = self.problem(&candidate.assembly, &samples, &variations);
         let mut all: Vec<Made> = Vec::new();
-        for pairs in [false, true] {
+        let freedoms = candidate.assembly.freedoms.len();
+        let one_place = (0..if freedoms <= FEW { freedoms } else { 0 }).map(Pairs::In);
+        let ways: Vec<Pairs> = match self.lean {
+            Lean::Even => {
+                std::iter::once(Pairs::Nowhere).chain(one_place).chain([Pairs::Everywhere]).collect()
+            }
+            _ => vec![Pairs::Everywhere],
+        };
+        for pairs in ways {
             let Some(made) = self.made_with(&problem, candidate, pairs) else { continue };
             // Where more than a neighbouring value is wrong, pairs do not mend it.
             let settled = made.design.met || made.worst_miss > HOPELESS;
@@ -357,14 +400,29 @@ impl Search<'_> {
         all
     }
 
-    fn made_with(&self, problem: &Problem, candidate: &Candidate, pairs: bool) -> Option<Made> {
-        let trims = if candidate.trimmed { &candidate.assembly.trims[..] } else { &[] };
-        let slots: Vec<usize> = trims.iter().map(|trim| trim.slot).collect();
-        let point = rounded(problem, &candidate.point, &slots, pairs)?;
-        let adjustables =
-            trims.iter().map(|trim| adjustable(problem, &point, trim)).collect::<Option<Vec<_>>>()?;
-        let finished = finished(problem, &point, &adjustables, self.task)?;
-        let (design, worst_miss) = design(finished, self.task, self.temperature_c, self.builds, self.seed);
+    fn made_with(&self, problem: &Problem, candidate: &Candidate, pairs: Pairs) -> Option<Made> {
+        let mut trims = candidate.assembly.trims.clone();
+        if !candidate.trimmed {
+            trims.clear();
+        }
+        // A trim that would not lead to the planned value is left out, and its part
+        // made as all others are.
+        let finished = loop {
+            let slots: Vec<usize> = trims.iter().map(|trim| trim.slot).collect();
+            let point = rounded(problem, &candidate.point, &slots, pairs)?;
+            let adjustables =
+                trims.iter().map(|trim| adjustable(problem, &point, trim)).collect::<Option<Vec<_>>>()?;
+            let finished = finished(problem, &point, &adjustables, self.task);
+            let Some(&failing) = finished.failing.first() else { break finished };
+            trims.retain(|trim| trim.slot != failing);
+            if trims.is_empty() {
+                return None;
+            }
+        };
+        let hopeless =
+            candidate.point.worst > 0.0 && pairs != Pairs::Nowhere || candidate.point.worst > HOPELESS;
+        let count = if hopeless { self.builds.min(RANKING_BUILDS) } else { self.builds };
+        let (design, worst_miss) = design(finished, self.task, self.temperature_c, count, self.seed);
         Some(Made { design, worst_miss })
     }
 }

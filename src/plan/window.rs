@@ -56,15 +56,7 @@ fn window(
         false => 0.25,
     };
     let q_max = by_detuning.min(by_coil);
-    let share = 1.0 / task.orders.len() as f64;
-    let q_min = task
-        .keep
-        .iter()
-        .flat_map(|band| task.judged(band).into_iter().map(move |edges| (edges, band.allowed_db)))
-        .flat_map(|((from_hz, to_hz), allowed_db)| {
-            [from_hz, to_hz].map(|hz| least_q_for_loss(hz / order.centre_hz, allowed_db * share))
-        })
-        .fold(0.0, f64::max);
+    let q_min = least_q_for_bands(task, order);
     let closed_by = (q_min > q_max).then(|| {
         // The one bound that alone would close it, from the hardest to mend on.
         let cause = if by_coil < q_min && by_coil <= by_detuning {
@@ -86,6 +78,19 @@ fn window(
         .map(|notch| notch.q)
         .reduce(f64::min);
     QWindow { order: order.order, q_min, q_max, q_chosen, closed_by }
+}
+
+/// Least Q of a notch at this order by the keep bands of the task, the loss allowed
+/// shared among the orders to be reduced.
+pub fn least_q_for_bands(task: &Task, order: &OrderTask) -> f64 {
+    let share = 1.0 / task.orders.len() as f64;
+    task.keep
+        .iter()
+        .flat_map(|band| task.judged(band).into_iter().map(move |edges| (edges, band.allowed_db)))
+        .flat_map(|((from_hz, to_hz), allowed_db)| {
+            [from_hz, to_hz].map(|hz| least_q_for_loss(hz / order.centre_hz, allowed_db * share))
+        })
+        .fold(0.0, f64::max)
 }
 
 /// Half the sum of both drifts over the half-range of temperature about 20 °C.
