@@ -27,6 +27,7 @@ use search::{Made, Search};
 use shelf::Shelf;
 
 use crate::analysis::Analysis;
+use crate::network::Circuit;
 use crate::parts::Stock;
 
 /// What the user asks of the planner.
@@ -111,6 +112,9 @@ pub fn plan(
         seed: options.seed,
         lean: Lean::Even,
     };
+    if task.orders.is_empty() {
+        return Ok(nothing_to_do(&search, brief));
+    }
     let mut made = search.run(progress);
     if made.first().is_some_and(|made| !made.design.met) {
         made = search.run_leaning(made, progress);
@@ -122,6 +126,26 @@ pub fn plan(
 
 fn held(stock: &Stock) -> String {
     format!("{} lines of capacitors and {} of resistors", stock.capacitors.len(), stock.resistors.len())
+}
+
+/// The plan where no order needs reducing: a wire.
+fn nothing_to_do(search: &Search, brief: &LineBrief) -> Plan {
+    let task = search.task;
+    let circuit = Circuit { source: brief.source, load: brief.load, sections: Vec::new(), parts: Vec::new() };
+    let mut notes = task.notes.clone();
+    notes.push("no harmonic found needs reducing for this brief: buy nothing".to_owned());
+    Plan {
+        design: search.of_nothing(circuit),
+        brief: brief.clone(),
+        nominal_hz: task.nominal_hz,
+        mean_hz: task.mean_hz,
+        design_spread_hz: task.spread_hz,
+        centre_hz: task.centre_hz,
+        q_windows: Vec::new(),
+        obstacles: Vec::new(),
+        alternatives: Vec::new(),
+        notes,
+    }
 }
 
 /// The winner with its alternatives, windows and band.

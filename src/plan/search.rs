@@ -5,7 +5,7 @@ use rayon::prelude::*;
 use super::assembly::Assembly;
 use super::chance::variations;
 use super::design::Design;
-use super::finish::{design, finished, rejudged};
+use super::finish::{Finished, design, finished, rejudged};
 use super::nearest;
 use super::optimise::{Point, Problem, QUICK, THOROUGH, Variation};
 use super::requirements::{COARSE, Lean, Rule, Sample, Task, samples};
@@ -13,7 +13,7 @@ use super::round::{Pairs, rounded};
 use super::shelf::Shelf;
 use super::trim::adjustable;
 use crate::network::kinds::{Draft, KINDS, Line, Setting};
-use crate::network::{Load, Source};
+use crate::network::{Circuit, Load, Source};
 use crate::parts::PartKind;
 
 /// Most sections in a cascade.
@@ -141,6 +141,12 @@ impl Search<'_> {
             progress(0.6 + 0.2 * turn as f64);
         }
         nearest::sorted(made)
+    }
+
+    /// The design of a circuit without parts.
+    pub fn of_nothing(&self, circuit: Circuit) -> Design {
+        let finished = Finished { circuit, trims: Vec::new(), sections: Vec::new(), failing: Vec::new() };
+        design(finished, self.task, self.temperature_c, 1, self.seed).0
     }
 
     /// All builds of a design of which fewer were drawn.
@@ -410,14 +416,15 @@ impl Search<'_> {
         let finished = loop {
             let slots: Vec<usize> = trims.iter().map(|trim| trim.slot).collect();
             let point = rounded(problem, &candidate.point, &slots, pairs)?;
-            let adjustables =
-                trims.iter().map(|trim| adjustable(problem, &point, trim)).collect::<Option<Vec<_>>>()?;
+            let able: Vec<_> = trims.iter().map(|trim| adjustable(problem, &point, trim)).collect();
+            if let Some(unable) = able.iter().position(Option::is_none) {
+                trims.remove(unable);
+                continue;
+            }
+            let adjustables: Vec<_> = able.into_iter().flatten().collect();
             let finished = finished(problem, &point, &adjustables, self.task);
             let Some(&failing) = finished.failing.first() else { break finished };
             trims.retain(|trim| trim.slot != failing);
-            if trims.is_empty() {
-                return None;
-            }
         };
         let hopeless =
             candidate.point.worst > 0.0 && pairs != Pairs::Nowhere || candidate.point.worst > HOPELESS;
