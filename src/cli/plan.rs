@@ -55,15 +55,27 @@ pub(super) fn text(plan: &Plan) -> String {
         text += &wrapped(&format!("  Trim {}      ", trim.step), &trim.instruction);
     }
     for other in &plan.alternatives {
-        text += &wrapped(
-            "  Otherwise   ",
-            &format!("{}: {:.1} % of builds meet the brief", other.summary, other.builds.meeting_pct),
-        );
+        text += &wrapped("  Otherwise   ", &in_a_line(other));
     }
     for note in &plan.notes {
         text += &wrapped("  Note        ", note);
     }
     text
+}
+
+/// A design in a line: what it is, what 95 % of its builds do, how many meet the brief.
+fn in_a_line(design: &Design) -> String {
+    let asked = design.predicted.iter().filter(|order| order.target_db.is_some());
+    let reductions: Vec<String> = asked.map(|order| format!("{:.1}", order.reduction_worst_db)).collect();
+    let losses: Vec<String> =
+        design.keep.iter().map(|band| format!("{:.2}", band.loss_worst_db.abs())).collect();
+    format!(
+        "{}: takes off {} dB, costs {} dB, met by {:.1} % of builds",
+        design.summary,
+        reductions.join(", "),
+        losses.join(", "),
+        design.builds.meeting_pct
+    )
 }
 
 fn parts(design: &Design) -> String {
