@@ -103,6 +103,37 @@ fn a_second_run_refills_the_folder_with_the_same_answer() {
 }
 
 #[test]
+fn a_line_quiet_enough_for_its_brief_is_told_to_buy_nothing() {
+    let home = tempfile::tempdir().unwrap();
+    let [out, brief] = ["out", "brief.yaml"].map(|name| in_home(home.path(), name));
+    let text = fs::read_to_string("examples/tide-gauge.yaml").unwrap();
+    let [from, to] = ["reduce_by: 40 dB", "leave: 1 V"];
+    assert!(text.contains(from));
+    let stock = fs::canonicalize("examples/bench-stock.yaml").unwrap();
+    let text = text.replace(from, to).replace("bench-stock.yaml", stock.to_str().unwrap());
+    fs::write(&brief, text).unwrap();
+    let arguments = ["run", "demo-audio/tide-gauge.wav", "--line", &brief, "--out", &out];
+
+    let output = notchwright(&arguments);
+    let printed = String::from_utf8(output.stdout).unwrap();
+    assert_eq!(output.status.code(), Some(0), "{printed}");
+    assert!(printed.starts_with("Met without a filter"), "{printed}");
+    assert!(!printed.contains("Heard through"), "{printed}");
+
+    let answer = json(&notchwright(&[&arguments[..], &["--json"]].concat()));
+    assert_eq!(answer["plan"]["parts"], Value::Array(Vec::new()));
+    for order in answer["simulation"]["residual"].as_array().unwrap() {
+        assert!(order["predicted_db"].as_f64().unwrap().abs() < 1e-9, "{order}");
+    }
+    let before = fs::read("demo-audio/tide-gauge.wav").unwrap();
+    let after = fs::read(home.path().join("out/filtered.wav")).unwrap();
+    assert_eq!(before.len(), after.len());
+    for name in FILES {
+        assert!(home.path().join("out").join(name).metadata().unwrap().len() > 0, "{name} is empty");
+    }
+}
+
+#[test]
 fn the_commands_one_by_one_give_what_run_gives() {
     let home = tempfile::tempdir().unwrap();
     let [out, analysis, plan, netlist, heard] =

@@ -2,7 +2,7 @@
 
 use super::args::Plan as Arguments;
 use super::error::CliError;
-use super::table::{Table, wrapped};
+use super::table::{Table, decibels, wrapped};
 use super::{Ended, job, print_answer, single_file};
 use crate::analysis::Analysis;
 use crate::plan::{Design, Plan};
@@ -31,7 +31,9 @@ pub(super) fn text(plan: &Plan) -> String {
     let builds = &design.builds;
     let mut text = wrapped(
         "",
-        &if design.met {
+        &if design.circuit.parts.is_empty() && design.met {
+            "No filter is needed: the line meets the brief as it is.".to_owned()
+        } else if design.met {
             format!(
                 "Brief met by {:.1} % of {} builds: {}.",
                 builds.meeting_pct, builds.count, design.summary
@@ -46,7 +48,9 @@ pub(super) fn text(plan: &Plan) -> String {
     for obstacle in &plan.obstacles {
         text += &wrapped("  In the way  ", obstacle);
     }
-    text += &format!("\n{}\n{}\n{}", parts(design), predictions(design), keep(design));
+    for table in [parts(design), predictions(design), keep(design)].iter().filter(|table| !table.is_empty()) {
+        text += &format!("\n{table}");
+    }
     text.push('\n');
     if design.trims.is_empty() && !design.circuit.parts.is_empty() {
         text += &wrapped("  Trim        ", "none needed");
@@ -116,8 +120,8 @@ fn keep(design: &Design) -> String {
         table.row([
             format!("{} to {} Hz", band.from_hz, band.to_hz),
             format!("{} dB", band.allowed_db),
-            format!("{:.2} dB", band.loss_db),
-            format!("{:.2} dB", band.loss_worst_db),
+            decibels(band.loss_db, 2),
+            decibels(band.loss_worst_db, 2),
         ]);
     }
     table.lines()

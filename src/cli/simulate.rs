@@ -3,7 +3,7 @@
 use super::args::Simulate;
 use super::error::CliError;
 use super::folder::OutFolder;
-use super::table::{Table, wrapped};
+use super::table::{Table, decibels, wrapped};
 use super::{Ended, job, print_answer};
 use crate::plan::Plan;
 use crate::simulation::{Simulation, Start};
@@ -25,20 +25,15 @@ pub(super) fn run(arguments: &Simulate) -> Result<Ended, CliError> {
     let heard = job::simulate(&mut capture, &plan, &analysed, start, &mut folder)?;
     folder.write("simulation.yaml", &job::yaml_text("simulation", &heard.simulation))?;
     folder.finish(false)?;
-    print_answer(arguments.json, &heard.simulation, || text(&heard.simulation));
+    print_answer(arguments.json, &heard.simulation, || text(&plan, &heard.simulation));
     Ok(Ended::met(heard.simulation.met))
 }
 
 /// The simulation for people: verdict, residual, bands, settling.
-pub(super) fn text(simulation: &Simulation) -> String {
-    let mut text = wrapped(
-        "",
-        if simulation.met {
-            "Heard through the filter, the recording meets the brief."
-        } else {
-            "Heard through the filter, the recording misses the brief."
-        },
-    );
+pub(super) fn text(plan: &Plan, simulation: &Simulation) -> String {
+    let heard = if plan.design.circuit.parts.is_empty() { "As it is" } else { "Heard through the filter" };
+    let does = if simulation.met { "meets" } else { "misses" };
+    let mut text = wrapped("", &format!("{heard}, the recording {does} the brief."));
     for miss in &simulation.misses {
         text += &wrapped("  Missed      ", miss);
     }
@@ -54,8 +49,12 @@ pub(super) fn text(simulation: &Simulation) -> String {
             order.order.to_string(),
             format!("{:.1} dBFS", order.before_dbfs),
             format!("{}{:.1} dBFS", if order.at_noise_floor { "< " } else { "" }, order.after_dbfs),
-            format!("{}{:.1} dB", if order.at_noise_floor { "> " } else { "" }, order.reduction_db),
-            format!("{:.1} dB", order.predicted_db),
+            match (order.at_noise_floor, order.reduction_db) {
+                (true, ..=0.0) => "in the noise".to_owned(),
+                (true, least_db) => format!("> {}", decibels(least_db, 1)),
+                (false, db) => decibels(db, 1),
+            },
+            decibels(order.predicted_db, 1),
         ]);
     }
     text += &format!("\n{}", table.lines());
@@ -64,18 +63,22 @@ pub(super) fn text(simulation: &Simulation) -> String {
     }
     text.push('\n');
     for band in &simulation.keep {
-        let measured = band
-            .measured_db
-            .map_or(String::new(), |loss| format!("; {loss:.2} dB of the power in it, on the samples"));
+        let measured = band.measured_db.map_or(String::new(), |loss| format!("; {}", of_its_power(loss)));
         text += &wrapped(
             "  Kept        ",
             &format!(
-                "{} to {} Hz loses {:.2} dB at most, {} dB allowed{measured}",
-                band.from_hz, band.to_hz, band.loss_db, band.allowed_db
+                "{} to {} Hz {} {} at most, {} dB allowed{measured}",
+                band.from_hz,
+                band.to_hz,
+                if band.loss_db < -0.005 { "gains" } else { "loses" },
+                decibels(band.loss_db.abs(), 2),
+                band.allowed_db
             ),
         );
     }
-    text += &wrapped("  Settling    ", &format!("{:.3} s to 1 % after a step", simulation.settling_s));
+    if simulation.settling_s > 0.0 {
+        text += &wrapped("  Settling    ", &format!("{:.3} s to 1 % after a step", simulation.settling_s));
+    }
     text += &wrapped(
         "  Headroom    ",
         &format!(
@@ -87,4 +90,10 @@ pub(super) fn text(simulation: &Simulation) -> String {
         text += &wrapped("  Note        ", note);
     }
     text
+}
+
+/// What became of a keep band's power on the samples.
+fn of_its_power(loss_db: f64) -> String {
+    let word = if loss_db < -0.005 { "more" } else { "less" };
+    format!("on the samples, its power is {} {word}", decibels(loss_db.abs(), 2))
 }

@@ -17,8 +17,12 @@ impl Table {
         self.rows.push(cells.into_iter().collect());
     }
 
-    /// The lines, two spaces in, two between columns, without trailing spaces.
+    /// The lines, two spaces in, two between columns, without trailing spaces;
+    /// none where no row follows the headings.
     pub(super) fn lines(&self) -> String {
+        if self.rows.len() < 2 {
+            return String::new();
+        }
         let columns = self.rows.iter().map(Vec::len).max().unwrap_or(0);
         let width = |column: usize| {
             self.rows.iter().filter_map(|row| row.get(column)).map(|cell| cell.chars().count()).max()
@@ -38,6 +42,15 @@ impl Table {
             text.push('\n');
         }
         text
+    }
+}
+
+/// Decibels to so many places, and no minus before a zero.
+pub(super) fn decibels(db: f64, places: usize) -> String {
+    let text = format!("{db:.places$} dB");
+    match text.strip_prefix('-') {
+        Some(zero) if !zero.bytes().any(|byte| (b'1'..=b'9').contains(&byte)) => zero.to_owned(),
+        _ => text,
     }
 }
 
@@ -78,6 +91,18 @@ mod tests {
         table.row(["1".to_owned(), "−20.3 dBFS".to_owned()]);
         table.row(["13".to_owned(), "−7.1 dBFS".to_owned()]);
         assert_eq!(table.lines(), "  Order       Level\n  1      −20.3 dBFS\n  13      −7.1 dBFS\n");
+    }
+
+    #[test]
+    fn a_table_without_rows_is_not_printed() {
+        assert_eq!(Table::new(&["Part", "Value"]).lines(), "");
+    }
+
+    #[test]
+    fn a_zero_has_no_sign() {
+        assert_eq!(decibels(-0.004, 2), "0.00 dB");
+        assert_eq!(decibels(-0.006, 2), "-0.01 dB");
+        assert_eq!(decibels(40.04, 1), "40.0 dB");
     }
 
     #[test]

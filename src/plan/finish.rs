@@ -41,7 +41,12 @@ pub fn finished(problem: &Problem, point: &Point, adjustables: &[Adjustable], ta
         .collect();
     for slot in slots_in_order {
         let mut add = |listed: &Listed, setting_si: Option<f64>| {
-            let mut part = problem.shelf.part(listed, problem.loss_hz);
+            let mut part = match setting_si {
+                Some(ohm) if listed.kind == PartKind::Trimmer => {
+                    problem.shelf.stock().trimmers[listed.line].part("", listed.value_si, ohm)
+                }
+                _ => problem.shelf.part(listed, problem.loss_hz),
+            };
             let (letter, count) = match listed.kind {
                 PartKind::Resistor => ("R", &mut counts[0]),
                 PartKind::Capacitor => ("C", &mut counts[1]),
@@ -50,9 +55,6 @@ pub fn finished(problem: &Problem, point: &Point, adjustables: &[Adjustable], ta
             };
             *count += 1;
             part.reference = format!("{letter}{count}");
-            if listed.kind == PartKind::Trimmer {
-                part.setting_ohm = setting_si;
-            }
             parts.push(part);
             Branch::Part(parts.len() - 1)
         };
@@ -335,6 +337,7 @@ pub fn design(
             _ => None,
         })
     };
+    let lines_hz: Vec<f64> = task.orders.iter().map(|order| order.centre_hz).collect();
     let keep: Vec<KeepResult> = task
         .keep
         .iter()
@@ -346,8 +349,7 @@ pub fn design(
             loss_db: kept(index)
                 .fold(0.0, |most, loss| if loss.abs() > f64::abs(most) { loss } else { most }),
             loss_worst_db: outcome.loss_worst_db[index],
-            judged_share: task.judged(band).iter().map(|(from, to)| to - from).sum::<f64>()
-                / (band.to_hz - band.from_hz),
+            judged_share: band.judged_share(&lines_hz, task.guard_hz),
         })
         .collect();
     let flat_loss_db = (0..task.keep.len()).flat_map(kept).fold(f64::INFINITY, f64::min);
@@ -383,6 +385,9 @@ pub fn rejudged(mut design: Design, task: &Task, temperature_c: (f64, f64), coun
 
 /// `notched low-pass, 1 coil, 5 parts, no trim`.
 fn summary(circuit: &Circuit, trims: &[Trim]) -> String {
+    if circuit.parts.is_empty() {
+        return "no filter".to_owned();
+    }
     let kinds: Vec<&str> = circuit.sections.iter().map(|section| section.kind.as_str()).collect();
     let coils = circuit.parts.iter().filter(|part| part.kind == PartKind::Coil).count();
     let mut trimmed: Vec<&str> = trims.iter().map(|trim| trim.part.as_str()).collect();

@@ -18,7 +18,7 @@ mod window;
 pub use brief::{BriefError, Centre, KeepBand, LineBrief, ReductionTarget};
 pub use builds::build;
 pub use design::*;
-pub use requirements::{OrderTask, Task, judged_intervals};
+pub use requirements::{OrderTask, Task};
 
 pub use window::{largest_q_for_detuning, largest_q_of_bridged_t, largest_q_of_trap, least_q_for_loss};
 

@@ -104,31 +104,8 @@ impl Task {
     /// Parts of a keep band that are judged: outside the guards of all lines.
     pub fn judged(&self, band: &KeepBand) -> Vec<(f64, f64)> {
         let lines: Vec<f64> = self.orders.iter().map(|order| order.centre_hz).collect();
-        judged_intervals(band.from_hz, band.to_hz, &lines, self.guard_hz)
+        band.judged(&lines, self.guard_hz)
     }
-}
-
-/// Parts of the band from `from_hz` to `to_hz` outside ± `guard_hz` of each of
-/// `lines_hz`, by rising frequency.
-pub fn judged_intervals(from_hz: f64, to_hz: f64, lines_hz: &[f64], guard_hz: f64) -> Vec<(f64, f64)> {
-    let mut lines = lines_hz.to_vec();
-    lines.sort_by(f64::total_cmp);
-    let mut intervals = Vec::new();
-    let mut start_hz = from_hz;
-    for line_hz in lines {
-        let (low_hz, high_hz) = (line_hz - guard_hz, line_hz + guard_hz);
-        if high_hz <= start_hz || low_hz >= to_hz {
-            continue;
-        }
-        if low_hz > start_hz {
-            intervals.push((start_hz, low_hz));
-        }
-        start_hz = start_hz.max(high_hz);
-    }
-    if start_hz < to_hz {
-        intervals.push((start_hz, to_hz));
-    }
-    intervals
 }
 
 /// Orders to be reduced and by how many decibels, by rising order.
