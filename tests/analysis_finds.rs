@@ -199,6 +199,37 @@ fn a_second_supply_is_told_apart() {
 }
 
 #[test]
+fn a_struck_bass_note_beside_a_60_hz_comb_is_no_second_supply() {
+    // B1 lies within an island's range of 60 Hz; with rests, and legato.
+    for (every_s, length_s) in [(1.0, 0.7), (0.5, 0.45), (2.0, 1.6), (0.5, 0.5)] {
+        for seed in 0..4 {
+            let lines = [(1, 0.02), (3, 0.015), (5, 0.01), (7, 0.005)];
+            let mut samples = with_noise(steady(60.009, &lines, RATE, 26.0), 1e-3, 50 + seed);
+            let mut at = 0.1 * seed as f64;
+            while at + length_s < 26.0 {
+                add_note(&mut samples, RATE, at, length_s, 61.735, 0.05);
+                at += every_s;
+            }
+            let analysis = run(RATE, vec![samples]).analysis;
+            assert!((analysis.mains.frequency_hz.expect("found") - 60.009).abs() < 2e-3);
+            let others = &analysis.other_supplies;
+            assert!(others.is_empty(), "{length_s} s of {every_s} s, seed {seed}: {others:?}");
+        }
+    }
+}
+
+#[test]
+fn a_second_generator_that_is_really_there_is_named() {
+    let mut samples = with_noise(steady(60.0, &[(1, 0.02), (3, 0.015), (5, 0.01)], RATE, 26.0), 1e-3, 60);
+    let generator = steady(64.5, &[(1, 0.02), (3, 0.01)], RATE, 26.0);
+    samples.iter_mut().zip(&generator).for_each(|(x, g)| *x += g);
+    let analysis = run(RATE, vec![samples]).analysis;
+    assert!((analysis.mains.frequency_hz.expect("found") - 60.0).abs() < 2e-3);
+    let other = analysis.other_supplies.first().unwrap_or_else(|| panic!("{:?}", analysis.mains));
+    assert!((other.frequency_hz - 64.5).abs() < 5e-3, "{other:?}");
+}
+
+#[test]
 fn a_generator_that_wanders_by_hertz_is_followed() {
     let track = analysis_signals::phase_of_wander(49.5, 2.0, 0.02, 60.0);
     let samples = with_noise(hum(&track, &[(1, 0.1), (3, 0.03)], &[0.0, 1.0], 1000, 60.0), 5e-3, 31);

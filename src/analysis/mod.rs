@@ -10,6 +10,7 @@ mod kalman;
 mod orders;
 mod phase;
 mod phasors;
+mod presence;
 mod spectrum;
 mod spread;
 mod supplies;

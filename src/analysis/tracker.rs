@@ -9,6 +9,7 @@
 
 use super::kalman::{Advance, Phases, Smoothed};
 use super::phasors::BlockPhasors;
+use super::presence::share_present;
 use num_complex::Complex64;
 use std::f64::consts::{LN_2, TAU};
 
@@ -125,6 +126,8 @@ pub(super) struct Line {
     pub lasting: f64,
     /// Median over time of its amplitude over the mean one: 1 for a steady line.
     pub steadiness: f64,
+    /// Share of the time for which it is there, see [`share_present`].
+    pub presence: f64,
 }
 
 /// Tracks the phase; `clear` are the orders to begin with, the clearest first,
@@ -246,7 +249,7 @@ fn standing(cells: &Cells, line: usize, phase: &[f64]) -> Line {
     let lasting = middle.norm_sqr() * groups.len() as f64 / (scatter * std::f64::consts::FRAC_PI_2);
     let mean = groups.iter().sum::<Complex64>() / groups.len() as f64;
     let steadiness = (mean.conj() * middle).re / mean.norm_sqr().max(1e-40);
-    Line { lasting, steadiness: steadiness.clamp(0.0, 2.0) }
+    Line { lasting, steadiness: steadiness.clamp(0.0, 2.0), presence: share_present(&turned) }
 }
 
 fn component_median(values: &[Complex64]) -> Complex64 {
