@@ -141,6 +141,73 @@ fn the_tide_gauge_brief_is_met_by_what_the_drawer_holds() {
     }
 }
 
+/// A number of the sequence: what a seed draws, evenly between 0 and 1.
+fn draw(state: &mut u64) -> f64 {
+    *state = state.wrapping_mul(6_364_136_223_846_793_005).wrapping_add(1_442_695_040_888_963_407);
+    (*state >> 11) as f64 / (1_u64 << 53) as f64
+}
+
+/// A brief as nobody would choose it: sources and loads from one ohm to a megohm, in
+/// any relation to each other, bands on either side of the hum, across it, or both.
+fn drawn_brief(seed: u64) -> (Analysis, LineBrief) {
+    let mut state = seed.wrapping_mul(0x9e37_79b9_7f4a_7c15) + 1;
+    let mut next = || draw(&mut state);
+    let nominal_hz = [16.7, 50.0, 60.0, 400.0][(4.0 * next()) as usize];
+    let levels: Vec<(u32, f64)> =
+        (1..=1 + (4.0 * next()) as u32).map(|k| (k, -20.0 - 10.0 * next() - 3.0 * f64::from(k))).collect();
+    let decades = |from: f64, to: f64, along: f64| from * (to / from).powf(along);
+    let below =
+        KeepBand { from_hz: 0.0, to_hz: nominal_hz * (0.05 + 0.7 * next()), allowed_db: 0.3 + 2.0 * next() };
+    let top_hz = nominal_hz * (3.0 + 200.0 * next());
+    let above =
+        KeepBand { from_hz: nominal_hz * (1.3 + next()), to_hz: top_hz, allowed_db: 0.5 + 3.0 * next() };
+    let keep = match (3.0 * next()) as u32 {
+        0 => vec![below],
+        1 => vec![above],
+        _ => vec![below, above],
+    };
+    let brief = LineBrief {
+        source: Source { resistance_ohm: decades(1.0, 1e5, next()), inductance_h: 0.0 },
+        load: Load {
+            resistance_ohm: decades(10.0, 1e7, next()),
+            capacitance_f: decades(1e-12, 1e-7, next()),
+        },
+        keep,
+        target: ReductionTarget::ReduceByDb(6.0 + 40.0 * next()),
+        orders: None,
+        allow_hz: nominal_hz * decades(1e-4, 1e-2, next()),
+        guard_hz: nominal_hz / 5.0,
+        ..tide_gauge().1
+    };
+    (findings(nominal_hz, &levels), brief)
+}
+
+#[test]
+fn whatever_the_brief_the_answer_is_a_plan_from_listed_parts_or_a_reason() {
+    for stock in [bench_stock(), Stock::built_in()] {
+        for seed in 0..8 {
+            let (analysis, brief) = drawn_brief(seed);
+            let plan = match plan(&analysis, &brief, &stock, &PlanOptions::default(), &mut |_| {}) {
+                Ok(plan) => plan,
+                Err(PlanError::NothingToJudge { .. }) => continue,
+                Err(error) => panic!("brief {seed}: {error}"),
+            };
+            assert!(plan.design.met || !plan.obstacles.is_empty(), "brief {seed}: missed without a reason");
+            let (reduction_db, loss_db) = worst(&plan.design);
+            assert!(reduction_db.is_finite() && loss_db.is_finite(), "brief {seed}");
+            if plan.design.met {
+                let allowed = plan.design.keep.iter().all(|band| band.loss_db.abs() <= band.allowed_db);
+                let enough =
+                    plan.design.predicted.iter().all(|order| Some(order.reduction_db) >= order.target_db);
+                assert!(allowed && enough, "brief {seed}: met, but not nominally");
+            }
+            for part in &plan.design.circuit.parts {
+                assert!(is_listed(part, &stock), "brief {seed}: {} {}", part.reference, part.value);
+            }
+        }
+    }
+}
+
 #[test]
 fn what_cannot_be_had_is_answered_with_the_ends_of_the_trade_off_and_what_stands_in_the_way() {
     let plan = planned(&example_room(), &bench_stock());

@@ -24,8 +24,15 @@ impl Kind for TwinT {
         let [line] = setting.lines[..] else { return Vec::new() };
         // Wherever the keep bands lie on one side only, more is gained by going
         // off the symmetrical value; the search does, from here.
-        let resistance_ohm = (2.0 * setting.source_ohm * setting.load_ohm).sqrt();
-        let resistance_ohm = resistance_ohm.clamp(2.0 * setting.source_ohm, 0.2 * setting.load_ohm.min(1e7));
+        let symmetrical_ohm = (2.0 * setting.source_ohm * setting.load_ohm).sqrt();
+        let clear_of_source_ohm = 2.0 * setting.source_ohm;
+        let clear_of_load_ohm = 0.2 * setting.load_ohm.min(1e7);
+        // Between source and load that are near each other there is no value clear of both.
+        let resistance_ohm = if clear_of_source_ohm < clear_of_load_ohm {
+            symmetrical_ohm.clamp(clear_of_source_ohm, clear_of_load_ohm)
+        } else {
+            symmetrical_ohm
+        };
         let capacitance_f = 1.0 / (TAU * line.frequency_hz * resistance_ohm);
         if !setting.may_have_capacitance(capacitance_f) {
             return Vec::new();
