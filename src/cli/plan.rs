@@ -70,16 +70,33 @@ pub(super) fn text(plan: &Plan) -> String {
 /// A design in a line: what it is, what 95 % of its builds do, how many meet the brief.
 fn in_a_line(design: &Design) -> String {
     let asked = design.predicted.iter().filter(|order| order.target_db.is_some());
-    let reductions: Vec<String> = asked.map(|order| format!("{:.1}", order.reduction_worst_db)).collect();
+    let reductions: Vec<f64> = asked.map(|order| order.reduction_worst_db).collect();
     let losses: Vec<String> =
         design.keep.iter().map(|band| format!("{:.2}", band.loss_worst_db.abs())).collect();
     format!(
         "{}: takes off {} dB, costs {} dB, met by {:.1} % of builds",
         design.summary,
-        reductions.join(", "),
+        one_by_one_or_range(&reductions),
         losses.join(", "),
         design.builds.meeting_pct
     )
+}
+
+/// So many reductions can be told one by one.
+const TOLD_ONE_BY_ONE: usize = 5;
+
+fn one_by_one_or_range(reductions_db: &[f64]) -> String {
+    if reductions_db.len() > TOLD_ONE_BY_ONE {
+        return from_least_to_most(reductions_db);
+    }
+    reductions_db.iter().map(|db| format!("{db:.1}")).collect::<Vec<_>>().join(", ")
+}
+
+/// `46.7 to 47.4`, or the one figure where they are the same.
+pub(super) fn from_least_to_most(figures: &[f64]) -> String {
+    let [least, most] = [f64::min, f64::max].map(|pick| figures.iter().copied().reduce(pick).unwrap_or(0.0));
+    let [least, most] = [least, most].map(|figure| format!("{figure:.1}"));
+    if least == most { least } else { format!("{least} to {most}") }
 }
 
 fn parts(design: &Design) -> String {

@@ -82,14 +82,14 @@ fn verdict(plan: &Plan, heard: &Simulation) -> String {
             "Met without a filter: no hum found here needs reducing for this brief. Buy nothing.",
         );
     }
-    let asked = heard.residual.iter().filter(|order| order.target_db.is_some());
-    let least_db = asked.map(|order| order.reduction_db).min_by(f64::total_cmp);
     let loss_db = heard.keep.iter().map(|band| band.loss_db.abs()).max_by(f64::total_cmp);
     let met = if plan.design.met && heard.met { "Met" } else { "Not met" };
-    let asked = plan.design.predicted.iter().filter(|order| order.target_db.is_some());
-    let worst_db = asked.map(|order| order.reduction_worst_db).min_by(f64::total_cmp).unwrap_or(0.0);
-    let takes = least_db.map_or("has no hum to take off".to_owned(), |db| {
-        format!("takes {db:.1} dB or more off the hum asked for ({worst_db:.1} in 95 % of builds)")
+    let asked: Vec<_> = plan.design.predicted.iter().filter(|order| order.target_db.is_some()).collect();
+    let nominal: Vec<f64> = asked.iter().map(|order| order.reduction_db).collect();
+    let worst_db = asked.iter().map(|order| order.reduction_worst_db).min_by(f64::total_cmp);
+    let takes = worst_db.map_or("has no hum to take off".to_owned(), |worst_db| {
+        let nominal = plan::from_least_to_most(&nominal);
+        format!("takes {nominal} dB off the hum asked for ({worst_db:.1} dB or more in 95 % of builds)")
     });
     let costs =
         loss_db.map_or(String::new(), |db| format!(" and costs the wanted signal {db:.2} dB at most"));

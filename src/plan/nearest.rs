@@ -224,9 +224,11 @@ fn closed_window(window: &QWindow, task: &Task, stock: &Stock) -> String {
     }
     if window.closed_by.as_deref() == Some("spread") {
         let detuning = 1.0 / (2.0 * window.q_min * (10f64.powf(order.target_db / 10.0) - 1.0).sqrt());
+        let wander_hz = detuning * order.centre_hz / f64::from(order.order);
+        // Two digits, whatever it is: a zero would say nothing.
+        let decimals = (1 - wander_hz.log10().floor() as i32).clamp(0, 9) as usize;
         cures.push(format!(
-            "a wander of ± {:.3} Hz at most (designed for: ± {:.3} Hz)",
-            detuning * order.centre_hz / f64::from(order.order),
+            "a wander of ± {wander_hz:.decimals$} Hz at most (designed for: ± {:.3} Hz)",
             task.spread_hz
         ));
     }
@@ -239,7 +241,8 @@ fn closed_window(window: &QWindow, task: &Task, stock: &Stock) -> String {
         if cures.is_empty() {
             String::new()
         } else {
-            format!("; any of these alone would open it: {}", cures.join(", "))
+            let these = if cures.len() == 1 { "this" } else { "any of these" };
+            format!("; {these} alone would open it: {}", cures.join(", "))
         }
     )
 }
