@@ -98,6 +98,10 @@ fn the_page_answers_in_the_order_in_which_one_asks() {
     ];
     let body = &html[html.find("<body>").unwrap()..];
     let mut from = 0;
+    assert!(
+        body.find("class=\"headline").unwrap() < body.find("<nav").unwrap(),
+        "the verdict comes before all links"
+    );
     for heading in order.iter().skip(1) {
         let at = body[from..]
             .find(&format!(">{heading}"))
@@ -128,6 +132,84 @@ fn all_cautions_stand_on_the_page() {
             assert!(text.contains(caution.text), "{} is missing", caution.topic);
         }
     }
+}
+
+/// The page from one heading to the next, as a reader sees it.
+fn part_of(html: &str, id: &str) -> String {
+    let from = html.find(&format!("<section id=\"{id}\"")).unwrap_or_else(|| panic!("no part {id}"));
+    visible(&html[from..from + html[from..].find("</section>").unwrap()])
+}
+
+#[test]
+fn the_bench_sheet_carries_the_cautions_by_itself() {
+    let sheet = part_of(&page(&tide_gauge().material()).unwrap(), "bench");
+    for caution in CAUTIONS {
+        assert!(sheet.contains(caution.text), "{} is missing", caution.topic);
+    }
+}
+
+#[test]
+fn trims_are_spoken_of_only_where_there_are_some() {
+    let mut findings = tide_gauge();
+    assert!(visible(&page(&findings.material()).unwrap()).contains("each trimmed as the bench sheet says"));
+    findings.plan.design.trims.clear();
+    let text = visible(&page(&findings.material()).unwrap());
+    for wrong in ["each trimmed", "after the trims", "trims as planned", "Check the trim"] {
+        assert!(!text.contains(wrong), "{wrong}");
+    }
+    assert!(text.contains("untrimmed") && text.contains("Check the notch again"));
+}
+
+#[test]
+fn no_deviation_is_told_finer_than_a_clock_can_hold() {
+    let mut findings = tide_gauge();
+    let mains = &mut findings.analysis.mains;
+    (mains.frequency_se_hz, mains.spread_floor_hz) = (Some(61e-9), Some(6.8e-6));
+    let found = part_of(&page(&findings.material()).unwrap(), "hum");
+    assert!(found.contains("(within\u{a0}0.00001\u{a0}Hz, one standard error)"), "{found}");
+    assert!(found.contains("noise alone would show less than 0.00001 Hz"));
+    assert!(!found.contains("nHz") && !found.contains("µHz"));
+}
+
+#[test]
+fn confidence_is_a_score_and_never_a_share() {
+    let found = part_of(&page(&tide_gauge().material()).unwrap(), "hum");
+    assert!(found.contains("1.00 of 1, and 0.5 counts as found (a score, not a probability)"));
+    assert!(!found.contains("99.9"));
+}
+
+#[test]
+fn only_a_single_notch_is_held_against_the_window_of_one() {
+    let mut findings = tide_gauge();
+    let notch = |order| notchwright::plan::Notched { order, notch_hz: 55.0, q: 11.64, depth_db: None };
+    findings.plan.q_windows[0].q_chosen = Some(11.64);
+    findings.plan.design.sections[0].notches = vec![notch(1)];
+    let other = part_of(&page(&findings.material()).unwrap(), "proposed");
+    assert!(!other.contains("11.64"));
+    assert!(other.contains("it is judged by the whole chain, not by this window"));
+
+    findings.plan.design.sections[0].kind = "shunt trap".to_owned();
+    findings.plan.q_windows.truncate(1);
+    let single = part_of(&page(&findings.material()).unwrap(), "proposed");
+    assert!(single.contains("11.64") && !single.contains("judged by the whole chain"));
+}
+
+#[test]
+fn the_spectrum_says_in_what_bandwidth_noise_reads() {
+    let findings = tide_gauge();
+    let text = part_of(&page(&findings.material()).unwrap(), "will-do");
+    assert!(text.contains("noise reads its power in a bandwidth of"));
+    assert!(!text.contains("Each line of the spectrum is"));
+}
+
+#[test]
+fn a_gain_is_called_a_gain_and_a_band_names_both_its_units() {
+    let mut findings = tide_gauge();
+    findings.plan.design.flat_loss_db = -1.94;
+    (findings.plan.design.keep[0].from_hz, findings.plan.design.keep[0].to_hz) = (80.0, 15_000.0);
+    let text = visible(&page(&findings.material()).unwrap());
+    assert!(text.contains("1.94\u{a0}dB gained") && !text.contains("\u{2212}1.94"));
+    assert!(text.contains("80\u{a0}Hz to 15\u{a0}kHz") && !text.contains("80 to 15"));
 }
 
 #[test]

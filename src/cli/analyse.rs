@@ -6,6 +6,7 @@ use super::table::{Table, wrapped};
 use super::{Ended, job, print_answer, single_file};
 use crate::analysis::Analysis;
 use crate::plan::LineBrief;
+use crate::report;
 
 /// Harmonics shown as text; the files hold all.
 const SHOWN_HARMONICS: usize = 12;
@@ -57,18 +58,11 @@ pub(super) fn text(analysis: &Analysis) -> String {
     if let (Some(spread), Some(floor)) = (mains.spread_hz, mains.spread_floor_hz) {
         text += &wrapped(
             "  Wander      ",
-            &format!(
-                "{} for 95 % of the time (noise alone would show {})",
-                job::deviation(spread),
-                job::deviation(floor)
-            ),
+            &format!("{} for 95 % of the time ({})", report::deviation(spread), report::noise_alone(floor)),
         );
     }
     if mains.found {
-        text += &wrapped(
-            "  Confidence  ",
-            &format!("{:.2} of 1, and 0.5 counts as found (a score, not a probability)", mains.confidence),
-        );
+        text += &wrapped("  Confidence  ", &report::confidence(mains.confidence));
     }
     text += &harmonics(analysis);
     for supply in &analysis.other_supplies {
@@ -107,7 +101,7 @@ fn verdict(analysis: &Analysis) -> String {
         return "No mains hum found.\n".to_owned();
     };
     let nominal = mains.nominal_hz.map_or(String::new(), |nominal| format!("{nominal} Hz "));
-    let error = mains.frequency_se_hz.map_or(String::new(), |se| format!(" ({})", job::deviation(se)));
+    let error = mains.frequency_se_hz.map_or(String::new(), |se| format!(" ({})", report::deviation(se)));
     let volts = strongest.rms_v.map_or(String::new(), |volts| format!(", {} rms", job::volts(volts)));
     wrapped(
         "",

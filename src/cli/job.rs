@@ -152,18 +152,6 @@ pub(super) fn netlist_text(plan: &Plan) -> String {
     plan.design.circuit.netlist(&title)
 }
 
-/// What lies below this, in hertz, no notch and no sample clock tells apart.
-const LEAST_TOLD_HZ: f64 = 1e-5;
-
-/// A deviation in hertz, to two digits: `± 0.0083 Hz`.
-pub(super) fn deviation(hertz: f64) -> String {
-    if hertz < LEAST_TOLD_HZ {
-        return "within 0.00001 Hz".to_owned();
-    }
-    let decimals = (1 - hertz.log10().floor() as i32).clamp(0, 6) as usize;
-    format!("± {hertz:.decimals$} Hz")
-}
-
 /// Volts as one would write them: `137 mV`.
 pub(super) fn volts(volts: f64) -> String {
     // Three digits: more would promise what full scale is rarely known to.

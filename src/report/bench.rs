@@ -76,6 +76,12 @@ pub(super) fn purchases(parts: &[Part]) -> Vec<Purchase> {
 /// The steps of the assembly: check the parts, fit section by section, trim.
 pub(super) fn steps(material: &Material) -> Vec<Step> {
     let circuit = &material.plan.design.circuit;
+    let reading = if material.plan.design.trims.is_empty() {
+        "Readings with generator and load in place, for nominal parts."
+    } else {
+        "Readings with generator and load in place, for nominal parts and trims as planned; a notch is found only \
+         after its trim."
+    };
     let mut steps = vec![Step {
         title: "Check the parts before they are fitted".to_owned(),
         work: circuit.parts.iter().map(check_part).collect(),
@@ -88,9 +94,7 @@ pub(super) fn steps(material: &Material) -> Vec<Step> {
         steps.push(Step {
             title: format!("Fit section {}: {}", n + 1, section.kind),
             work: (0..section.stages.len()).map(|last| fit_and_read(material, n, last)).collect(),
-            reading: "Readings with generator and load in place, for nominal parts and trims as planned; a notch is \
-                      found only after its trim."
-                .to_owned(),
+            reading: reading.to_owned(),
         });
     }
     steps
@@ -103,7 +107,7 @@ fn fit_and_read(material: &Material, n: usize, last: usize) -> String {
     sections[n].stages.truncate(last + 1);
     let words = stage_words(&circuit.sections[n].stages[last], &circuit.parts);
     let built = Circuit { sections, ..circuit.clone() };
-    format!("{}. Then about {}.", capitalised(&words), reading_so_far(material, &built, n))
+    format!("{}. Then: {}.", capitalised(&words), reading_so_far(material, &built, n))
 }
 
 /// What to measure on one part.
@@ -184,7 +188,7 @@ fn reading_so_far(material: &Material, built: &Circuit, last: usize) -> String {
     let words: Vec<String> = points
         .iter()
         .filter(|f| f.is_finite() && **f > 0.0)
-        .map(|&f| format!("{} at {}", gain_words(gain_db(built, f)), hertz(f)))
+        .map(|&f| format!("{} at {}", about(gain_words(gain_db(built, f))), hertz(f)))
         .collect();
     listing(&words)
 }
@@ -202,6 +206,11 @@ fn gain_words(gain_db: f64) -> String {
         g if g < 0.0 => format!("{} down", decibel(-g)),
         g => format!("{} up", decibel(g)),
     }
+}
+
+/// `about 3.0 dB down`; what is no figure needs no caution.
+fn about(words: String) -> String {
+    if words.starts_with(|c: char| c.is_ascii_digit()) { format!("about {words}") } else { words }
 }
 
 /// The check frequencies: ends and middle of each keep band, each order to be
@@ -290,8 +299,13 @@ pub(super) fn setup(material: &Material) -> Vec<String> {
          readings below are against it."
             .to_owned(),
         format!(
-            "Level: small enough for the coils, large enough for the meter in the notch; read the notch with a \
-             band-pass or an analyser, since the generator's own harmonics pass beside it ({} and up).",
+            "Level: {}large enough for the meter in the notch; read the notch with a band-pass or an analyser, since \
+             the generator's own harmonics pass beside it ({} and up).",
+            if circuit.parts.iter().any(|p| p.kind == PartKind::Coil) {
+                "small enough for the coils, "
+            } else {
+                ""
+            },
             hertz_short((2.0 * material.plan.mean_hz).round())
         ),
     ]
@@ -314,11 +328,11 @@ pub(super) fn layout(material: &Material) -> Vec<String> {
              output; then fix it there."
                 .to_owned(),
         );
-        advice.push(
+        let again = if material.plan.design.trims.is_empty() { "notch" } else { "trim" };
+        advice.push(format!(
             "If that is not enough: a closed box of mild steel or a high-permeability can around the coil. Check the \
-             trim again afterwards, since the can changes the inductance."
-                .to_owned(),
-        );
+             {again} again afterwards, since the can changes the inductance."
+        ));
     }
     if coils.len() > 1 {
         advice.push("Set coils at right angles to each other and a few coil lengths apart.".to_owned());
@@ -372,5 +386,7 @@ mod tests {
         assert_eq!(gain_words(-3.0), "3.00\u{a0}dB down");
         assert_eq!(gain_words(0.001), "no change");
         assert_eq!(gain_words(f64::NEG_INFINITY), "a full null");
+        assert_eq!(about(gain_words(-3.0)), "about 3.00\u{a0}dB down");
+        assert_eq!(about(gain_words(0.001)), "no change");
     }
 }

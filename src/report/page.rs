@@ -5,12 +5,13 @@ use serde::Serialize;
 
 use super::charts::{self, Chart, Size};
 use super::excerpt::OUTLINE_COLUMNS;
-use super::verdict::{self, level_and_volts, loss_words};
+use super::verdict::{self, level_with_volts, loss_words};
 use super::wording::{
-    counted, dbfs, decibel, duration, hertz, hertz_short, listing, number, short, si, small_hertz, with_unit,
+    band, confidence, counted, dbfs, decibel, deviation, duration, hertz, hertz_short, listing, noise_alone,
+    number, sentence, short, si, small_hertz, unbroken, with_unit,
 };
 use super::{CAUTIONS, Excerpt, Material, ReportError, bench, partslist, wav};
-use crate::plan::{Design, ReductionTarget};
+use crate::plan::{Design, ReductionTarget, SectionSummary};
 use crate::simulation::BeforeAfter;
 
 const TEMPLATE: &str = include_str!("page.html");
@@ -19,6 +20,7 @@ const TEMPLATE: &str = include_str!("page.html");
 pub(super) fn compose(material: &Material) -> Result<String, ReportError> {
     let mut environment = Environment::new();
     // The name ends in `.html`: all text is escaped unless marked safe.
+    environment.add_filter("sentence", |text: String| sentence(&text));
     environment.add_template("page.html", TEMPLATE)?;
     Ok(environment.get_template("page.html")?.render(view(material))?)
 }
@@ -60,15 +62,17 @@ fn view(material: &Material) -> Value {
         builds_count => design.builds.count,
         builds_seed => design.builds.seed,
         windows => serialised(windows(material)),
+        windows_beside => plan.q_windows.iter().any(|w| !by_single_notch(design, w.order)),
         charts => serialised(pictures(material)),
         residual => serialised(residual(material)),
+        any_in_noise => material.simulation.residual.iter().any(|r| r.at_noise_floor),
         keep => serialised(keep(material)),
         third_octaves => serialised(third_octaves(material)),
         figures => serialised(figures(material)),
         simulation_notes => material.simulation.notes.clone(),
         alternatives => serialised(alternatives(material)),
         plan_notes => plan.notes.clone(),
-        listening => serialised(material.excerpt.map(listening)),
+        listening => serialised(material.excerpt.map(|excerpt| listening(excerpt, hum_hz(material)))),
         purchases => serialised(bench::purchases(&design.circuit.parts)),
         setup => bench::setup(material),
         steps => serialised(bench::steps(material)),
@@ -76,7 +80,8 @@ fn view(material: &Material) -> Value {
         layout => bench::layout(material),
         cautions => serialised(CAUTIONS),
         source_resistance => si(design.circuit.source.resistance_ohm, "Ω", 3),
-        temperature => format!("{} to {} °C", short(plan.brief.temperature_from_c), short(plan.brief.temperature_to_c)),
+        trimmed => !design.trims.is_empty(),
+        temperature => format!("{} to {}\u{a0}°C", short(plan.brief.temperature_from_c), short(plan.brief.temperature_to_c)),
         design_spread => format!("± {} about {}", small_hertz(plan.design_spread_hz), hertz(plan.centre_hz)),
         guard => hertz_short(plan.brief.guard_hz),
     }
@@ -118,31 +123,32 @@ fn found(material: &Material) -> Vec<Fact> {
         ));
     }
     if let Some(frequency) = mains.frequency_hz {
-        let error =
-            mains.frequency_se_hz.map_or(String::new(), |se| format!(", standard error {}", si(se, "Hz", 2)));
-        facts.push(fact("Mean frequency", format!("{}{error}", hertz(frequency))));
+        let error = mains
+            .frequency_se_hz
+            .map_or(String::new(), |se| format!(" ({}, one standard error)", unbroken(&deviation(se))));
+        facts.push(fact("Mean frequency", format!("{}{error}", with_unit(frequency, 5, "Hz"))));
     }
     facts.push(fact(
         "Supply",
         mains.nominal_hz.map_or("undetermined".to_owned(), |hz| format!("{} mains", hertz_short(hz))),
     ));
     if let Some(spread) = mains.spread_hz {
-        let floor = mains.spread_floor_hz.map_or(String::new(), |floor| {
-            format!("; the estimator's noise alone would show {}", small_hertz(floor))
-        });
-        let below = match mains.spread_floor_hz {
-            Some(floor) if spread <= floor => "below what can be told",
-            _ => "95 % of the time within",
-        };
-        facts.push(fact("Wander", format!("{below} ± {}{floor}", small_hertz(spread))));
+        facts.push(fact("Wander", wander(spread, mains.spread_floor_hz)));
     }
     facts.push(fact("Confidence", confidence(mains.confidence)));
     facts
 }
 
-/// A confidence, which is never quite 100 %.
-fn confidence(share: f64) -> String {
-    if share > 0.999 { "over 99.9\u{a0}%".to_owned() } else { with_unit(share * 100.0, 1, "%") }
+/// How far the frequency wanders, and how much of that could be noise.
+fn wander(spread_hz: f64, floor_hz: Option<f64>) -> String {
+    let spread = unbroken(&deviation(spread_hz));
+    match floor_hz {
+        Some(floor) if spread_hz <= floor => {
+            format!("too little to tell from the noise of the measurement ({})", noise_alone(floor))
+        }
+        Some(floor) => format!("{spread} for 95\u{a0}% of the time ({})", noise_alone(floor)),
+        None => format!("{spread} for 95\u{a0}% of the time"),
+    }
 }
 
 #[derive(Serialize)]
@@ -190,12 +196,7 @@ fn folding(material: &Material) -> Vec<String> {
     folded
         .map(|f| {
             let remark = if f.remark.is_empty() { String::new() } else { format!(": {}", f.remark) };
-            format!(
-                "Order {} ({}) lies above half the sample rate and appears at {}{remark}",
-                f.order,
-                hertz(f.frequency_hz),
-                hertz(f.appears_at_hz)
-            )
+            format!("order {} ({}) at {}{remark}", f.order, hertz(f.frequency_hz), hertz(f.appears_at_hz))
         })
         .collect()
 }
@@ -213,7 +214,7 @@ fn brief(material: &Material) -> Vec<Fact> {
     let keep: Vec<String> = brief
         .keep
         .iter()
-        .map(|k| format!("{} to {} within {}", short(k.from_hz), hertz_short(k.to_hz), decibel(k.allowed_db)))
+        .map(|k| format!("{} within {}", band(k.from_hz, k.to_hz), decibel(k.allowed_db)))
         .collect();
     let inductance = if brief.source.inductance_h > 0.0 {
         format!(" and {} in series", si(brief.source.inductance_h, "H", 3))
@@ -320,13 +321,18 @@ fn trims(design: &Design) -> Vec<TrimRow> {
             step: t.step,
             part: t.part.clone(),
             method: t.method.clone(),
-            range: format!("{} to {}", si(t.from_si, unit_of(&t.part), 3), si(t.to_si, unit_of(&t.part), 3)),
+            range: trim_range(t.from_si, t.to_si, unit_of(&t.part)),
             frequency: hertz(t.frequency_hz),
             aim: t.aim.clone(),
             residue: format!("± {}\u{a0}%", short(t.residue * 100.0)),
             instruction: t.instruction.clone(),
         })
         .collect()
+}
+
+fn trim_range(from: f64, to: f64, unit: &str) -> String {
+    let to = si(to, unit, 3);
+    if from > 0.0 { format!("{} to {to}", si(from, unit, 3)) } else { format!("up to {to}") }
 }
 
 #[derive(Serialize)]
@@ -339,7 +345,8 @@ struct WindowRow {
 }
 
 fn windows(material: &Material) -> Vec<WindowRow> {
-    let q = |value: f64| if value == f64::INFINITY { "no bound".to_owned() } else { number(value, 3) };
+    let q = |value: f64| if value == f64::INFINITY { "no bound".to_owned() } else { number(value, 2) };
+    let design = &material.plan.design;
     material
         .plan
         .q_windows
@@ -348,10 +355,21 @@ fn windows(material: &Material) -> Vec<WindowRow> {
             order: w.order,
             least: q(w.q_min),
             most: q(w.q_max),
-            chosen: w.q_chosen.map_or("–".to_owned(), q),
+            chosen: w.q_chosen.filter(|_| by_single_notch(design, w.order)).map_or("–".to_owned(), q),
             closed_by: w.closed_by.as_ref().map_or("open".to_owned(), |what| format!("closed by {what}")),
         })
         .collect()
+}
+
+/// Kinds of section that are one notch and nothing else: their Q can be held
+/// against the window of a single notch.
+const SINGLE_NOTCHES: [&str; 4] = ["shunt trap", "series tank", "bridged-T", "twin-T"];
+
+/// Whether an order is taken down by single notches alone.
+fn by_single_notch(design: &Design, order: u32) -> bool {
+    let notches = |s: &SectionSummary| s.order == Some(order) || s.notches.iter().any(|n| n.order == order);
+    let mut takers = design.sections.iter().filter(|s| notches(s)).peekable();
+    takers.peek().is_some() && takers.all(|s| SINGLE_NOTCHES.contains(&s.kind.as_str()))
 }
 
 #[derive(Serialize)]
@@ -398,11 +416,8 @@ fn inline(svg: &str, label: &str, own_width: bool) -> String {
             body.replace_range(from..to + close.len(), "");
         }
     }
-    let style = if width.is_empty() || !own_width {
-        String::new()
-    } else {
-        format!(" style=\"max-width:{width}px\"")
-    };
+    let style =
+        if width.is_empty() || !own_width { String::new() } else { format!(" style=\"--own:{width}px\"") };
     let label = charts::escaped(label);
     format!("<svg viewBox=\"{view_box}\" role=\"img\" aria-label=\"{label}\"{style}>{}", body.trim_start())
 }
@@ -430,12 +445,12 @@ fn residual(material: &Material) -> Vec<ResidualRow> {
         .residual
         .iter()
         .map(|r| {
-            let (most, least) = if r.at_noise_floor { ("at most ", "at least ") } else { ("", "") };
+            let (most, least) = if r.at_noise_floor { ("≤ ", "≥ ") } else { ("", "") };
             ResidualRow {
                 order: r.order,
                 frequency: hertz(r.frequency_hz),
-                before: level_and_volts(r.before_dbfs, full_scale_v),
-                after: format!("{most}{}", level_and_volts(r.after_dbfs, full_scale_v)),
+                before: level_with_volts(r.before_dbfs, full_scale_v),
+                after: format!("{most}{}", level_with_volts(r.after_dbfs, full_scale_v)),
                 reduction: format!("{least}{}", decibel(r.reduction_db)),
                 predicted: decibel(r.predicted_db),
                 asked: r.target_db.map_or("–".to_owned(), decibel),
@@ -464,7 +479,7 @@ fn keep(material: &Material) -> Vec<KeepRow> {
         .map(|k| {
             let here = measured.iter().find(|m| m.from_hz == k.from_hz && m.to_hz == k.to_hz);
             KeepRow {
-                band: format!("{} to {}", short(k.from_hz), hertz_short(k.to_hz)),
+                band: band(k.from_hz, k.to_hz),
                 allowed: decibel(k.allowed_db),
                 nominal: loss_words(k.loss_db),
                 worst: loss_words(k.loss_worst_db),
@@ -504,11 +519,11 @@ fn third_octaves(material: &Material) -> Vec<OctaveRow> {
 fn figures(material: &Material) -> Vec<Fact> {
     let s = material.simulation;
     let mut facts = vec![
-        fact("Settles to 1 % in", duration(s.settling_s)),
+        fact("Settles to 1\u{a0}% in", duration(s.settling_s)),
         fact(
             "Delays the signal by",
             format!(
-                "{} in the middle of the keep band; {} between the most and the least delayed part of it",
+                "{} in the middle of the keep band; its most and its least delayed part are {} apart",
                 duration(s.group_delay_s),
                 duration(s.group_delay_spread_s)
             ),
@@ -525,7 +540,7 @@ fn figures(material: &Material) -> Vec<Fact> {
                 number(s.headroom_gained_db / (20.0 * 2_f64.log10()), 1)
             ),
         ),
-        fact("Loss everywhere, flat part", decibel(material.plan.design.flat_loss_db)),
+        fact("Least loss in the keep bands", loss_words(material.plan.design.flat_loss_db)),
     ];
     let weighted = |pair: BeforeAfter| format!("{} before, {} after", dbfs(pair.before), dbfs(pair.after));
     if let Some(pair) = s.hum_a_weighted_dbfs {
@@ -583,7 +598,7 @@ struct Player {
     key: &'static str,
     uri: String,
     matched: f64,
-    matched_db: String,
+    matched_words: String,
     strip: String,
 }
 
@@ -595,7 +610,19 @@ struct Listening {
     gain: String,
 }
 
-fn listening(excerpt: &Excerpt) -> Listening {
+/// The supply's nominal frequency, or the 50 Hz of an example.
+fn hum_hz(material: &Material) -> f64 {
+    material.analysis.mains.nominal_hz.unwrap_or(50.0)
+}
+
+/// What a factor does to what is heard: `turned up by 6.0 dB`; `None` where that is nothing.
+fn turned(factor: f64) -> Option<String> {
+    let db = 20.0 * factor.log10();
+    let way = if db < 0.0 { "down" } else { "up" };
+    (db.abs() >= 0.05).then(|| format!("turned {way} by {}", with_unit(db.abs(), 1, "dB")))
+}
+
+fn listening(excerpt: &Excerpt, hum_hz: f64) -> Listening {
     let names = [("Before", "before"), ("After", "after"), ("Removed", "removed")];
     let matching = excerpt.matching();
     let full = excerpt.outlines.iter().flatten().map(|(low, high)| high.max(-low)).fold(0.0, f32::max);
@@ -604,7 +631,7 @@ fn listening(excerpt: &Excerpt) -> Listening {
         key,
         uri: wav::data_uri(&wav::encode(&excerpt.tracks[n], excerpt.gain, excerpt.rate_hz)),
         matched: matching[n],
-        matched_db: with_unit(20.0 * matching[n].log10(), 1, "dB"),
+        matched_words: turned(matching[n]).unwrap_or("as it is".to_owned()),
         strip: strip(&excerpt.outlines[n], full),
     });
     let what = if excerpt.whole {
@@ -620,17 +647,17 @@ fn listening(excerpt: &Excerpt) -> Listening {
     let speed = (excerpt.speed > 1).then(|| {
         format!(
             "This line is too slow to be heard as it is: it is played {} times faster than it was recorded, so \
-             that 50 Hz sound as {}.",
+             that {} is heard as {}.",
             excerpt.speed,
-            hertz_short(50.0 * f64::from(excerpt.speed))
+            hertz_short(hum_hz),
+            hertz_short(hum_hz * f64::from(excerpt.speed))
         )
     });
-    Listening {
-        players: players.collect(),
-        what,
-        speed,
-        gain: with_unit(20.0 * excerpt.gain.log10(), 1, "dB"),
-    }
+    let gain = turned(excerpt.gain)
+        .map_or("All three are played at the level they have".to_owned(), |words| {
+            format!("All three are {words} alike")
+        });
+    Listening { players: players.collect(), what, speed, gain }
 }
 
 /// Outline of the waveform as the points of an SVG polygon in a box of
@@ -658,8 +685,24 @@ mod tests {
         let inlined = inline(svg, "a \"dot\"", true);
         assert!(!inlined.contains("http"));
         assert!(inlined.contains("viewBox=\"0 0 600 200\"") && inlined.contains("<circle r=\"1\"/></svg>"));
-        assert!(inlined.contains("aria-label=\"a &quot;dot&quot;\"") && inlined.contains("max-width:300px"));
+        assert!(inlined.contains("aria-label=\"a &quot;dot&quot;\"") && inlined.contains("--own:300px"));
         assert!(!inlined.contains("<title>"));
+    }
+
+    #[test]
+    fn what_is_heard_is_turned_up_or_down_in_words() {
+        assert_eq!(turned(2.0).as_deref(), Some("turned up by 6.0\u{a0}dB"));
+        assert_eq!(turned(0.1).as_deref(), Some("turned down by 20.0\u{a0}dB"));
+        assert_eq!(turned(1.001), None);
+    }
+
+    #[test]
+    fn wander_below_the_noise_is_not_given_as_a_figure() {
+        assert_eq!(
+            wander(0.001, Some(0.002)),
+            "too little to tell from the noise of the measurement (noise alone would show ± 0.0020 Hz)"
+        );
+        assert!(wander(0.026, Some(6.8e-6)).starts_with("±\u{a0}0.026\u{a0}Hz for 95"));
     }
 
     #[test]

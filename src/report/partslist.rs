@@ -41,7 +41,10 @@ pub(super) fn value_with_tolerance(part: &Part) -> String {
 pub(super) fn remarks(part: &Part) -> Vec<String> {
     let mut remarks = Vec::new();
     if part.kind == PartKind::Coil {
-        remarks.push(format!("winding {}", si(part.series_resistance_ohm, "Ω", 3)));
+        // The material of a listed coil is its winding already.
+        if !part.material.as_ref().is_some_and(|material| material.contains("winding")) {
+            remarks.push(format!("winding {}", si(part.series_resistance_ohm, "Ω", 3)));
+        }
     }
     if let Some(ohm) = part.setting_ohm {
         remarks.push(format!("planned setting {}", si(ohm, "Ω", 3)));

@@ -3,7 +3,9 @@
 use serde::Serialize;
 
 use super::Material;
-use super::wording::{counted, dbfs, decibel, hertz, hertz_short, listing, number, short, si, volts_rms};
+use super::wording::{
+    band, counted, dbfs, decibel, hertz, hertz_short, listing, number, short, si, volts_rms,
+};
 use crate::simulation::Residual;
 
 /// Where a line of the brief stands.
@@ -54,7 +56,7 @@ pub(super) fn lines(material: &Material) -> Vec<Line> {
         let residual = material.simulation.residual.iter().find(|r| r.order == predicted.order);
         lines.push(Line {
             asked: format!(
-                "order {} ({}) down by at least {}",
+                "order {} ({}) down by {}",
                 predicted.order,
                 hertz_short(predicted.frequency_hz.round()),
                 decibel(target_db)
@@ -70,12 +72,7 @@ pub(super) fn lines(material: &Material) -> Vec<Line> {
         let measured =
             material.simulation.keep.iter().find(|k| k.from_hz == keep.from_hz && k.to_hz == keep.to_hz);
         lines.push(Line {
-            asked: format!(
-                "{} to {} within {}",
-                short(keep.from_hz),
-                hertz_short(keep.to_hz),
-                decibel(keep.allowed_db)
-            ),
+            asked: format!("{} within {}", band(keep.from_hz, keep.to_hz), decibel(keep.allowed_db)),
             predicted: Some(loss(keep.loss_worst_db, keep.allowed_db)),
             measured: measured.map(|k| loss(k.loss_db, keep.allowed_db)),
         });
@@ -96,7 +93,7 @@ fn measured_reduction(residual: &Residual, target_db: f64) -> Judged {
     let reached = residual.reduction_db >= target_db;
     if residual.at_noise_floor {
         return Judged {
-            figure: format!("at least {}, the rest drowns in noise", decibel(residual.reduction_db)),
+            figure: format!("at least {}, what is left is in the noise", decibel(residual.reduction_db)),
             standing: if reached { Standing::Met } else { Standing::Open },
         };
     }
@@ -118,12 +115,24 @@ fn together(levels_dbfs: impl Iterator<Item = f64>) -> f64 {
     10.0 * levels_dbfs.map(|level| 10_f64.powf(level / 10.0)).sum::<f64>().log10()
 }
 
-/// A level, with volts where the brief says what full scale is.
+/// Volts RMS of a level, where the brief says what full scale is.
+fn volts(level_dbfs: f64, full_scale_v: f64) -> Option<String> {
+    (full_scale_v > 0.0 && level_dbfs.is_finite()).then(|| si(volts_rms(level_dbfs, full_scale_v), "V", 3))
+}
+
+/// A level with its volts, for sentences.
 pub(super) fn level_and_volts(level_dbfs: f64, full_scale_v: f64) -> String {
-    if full_scale_v > 0.0 && level_dbfs.is_finite() {
-        format!("{} ({} RMS)", dbfs(level_dbfs), si(volts_rms(level_dbfs, full_scale_v), "V", 3))
-    } else {
-        dbfs(level_dbfs)
+    match volts(level_dbfs, full_scale_v) {
+        Some(volts) => format!("{} ({volts} RMS)", dbfs(level_dbfs)),
+        None => dbfs(level_dbfs),
+    }
+}
+
+/// The same for tables that say that volts are RMS.
+pub(super) fn level_with_volts(level_dbfs: f64, full_scale_v: f64) -> String {
+    match volts(level_dbfs, full_scale_v) {
+        Some(volts) => format!("{}, {volts}", dbfs(level_dbfs)),
+        None => dbfs(level_dbfs),
     }
 }
 
@@ -162,10 +171,9 @@ fn cost(material: &Material) -> String {
     if let Some(keep) = worst {
         let what = if keep.loss_worst_db < 0.0 { "gain" } else { "loss" };
         costs.push(format!(
-            "up to {} of {what} between {} and {}",
+            "up to {} of {what} from {}",
             decibel(keep.loss_worst_db.abs()),
-            short(keep.from_hz),
-            hertz_short(keep.to_hz)
+            band(keep.from_hz, keep.to_hz)
         ));
     }
     let price = design
@@ -191,7 +199,7 @@ pub(super) fn headline(material: &Material) -> (Standing, String) {
         ),
         (false, false) => (
             Standing::Missed,
-            "The brief is missed; this is the nearest that the stock list allows.".to_owned(),
+            "The brief is missed; this is the nearest filter found with the parts listed.".to_owned(),
         ),
     }
 }

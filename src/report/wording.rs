@@ -88,6 +88,66 @@ pub(super) fn hertz_short(value: f64) -> String {
     format!("{}\u{a0}{unit}", short(scaled))
 }
 
+/// A band of frequencies: `0 to 12 Hz`, but `80 Hz to 15 kHz`.
+pub(super) fn band(from_hz: f64, to_hz: f64) -> String {
+    let (from, to) = (hertz_short(from_hz), hertz_short(to_hz));
+    match (from.split_once('\u{a0}'), to.split_once('\u{a0}')) {
+        (Some((digits, unit)), Some((_, same))) if unit == same || from_hz == 0.0 => {
+            format!("{digits} to {to}")
+        }
+        _ => format!("{from} to {to}"),
+    }
+}
+
+/// What lies below this, in hertz, no notch and no sample clock tells apart.
+const LEAST_TOLD_HZ: f64 = 1e-5;
+
+/// A deviation in hertz, to two digits: `± 0.0083 Hz`; `within 0.00001 Hz` where
+/// more digits would promise more than a sample clock holds.
+pub fn deviation(hertz: f64) -> String {
+    if !hertz.is_finite() {
+        return UNKNOWN.to_owned();
+    }
+    if hertz < LEAST_TOLD_HZ {
+        return "within 0.00001 Hz".to_owned();
+    }
+    let decimals = (1 - hertz.log10().floor() as i32).clamp(0, 6) as usize;
+    format!("± {hertz:.decimals$} Hz")
+}
+
+/// The wander that the estimator's noise alone would feign.
+pub fn noise_alone(floor_hz: f64) -> String {
+    match floor_hz {
+        floor if !floor.is_finite() => "what noise alone would show is not known".to_owned(),
+        floor if floor < LEAST_TOLD_HZ => "noise alone would show less than 0.00001 Hz".to_owned(),
+        floor => format!("noise alone would show {}", deviation(floor)),
+    }
+}
+
+/// The confidence that there is mains hum, with what it is.
+pub fn confidence(score: f64) -> String {
+    format!("{score:.2} of 1, and 0.5 counts as found (a score, not a probability)")
+}
+
+/// Text whose words and units a page must not part.
+pub(super) fn unbroken(text: &str) -> String {
+    text.replace(' ', "\u{a0}")
+}
+
+/// Words that were written to stand behind a label, as a sentence of their own:
+/// a capital at its head unless that is a name, a full stop at its end.
+pub(super) fn sentence(text: &str) -> String {
+    let text = text.trim();
+    let head = text.split(' ').next().unwrap_or_default();
+    let is_word = head.trim_end_matches([',', ':']).chars().all(|c| c.is_ascii_lowercase() || c == '-');
+    let mut letters = text.chars();
+    let begun = match letters.next() {
+        Some(first) if is_word => first.to_uppercase().chain(letters).collect(),
+        _ => text.to_owned(),
+    };
+    if begun.is_empty() || begun.ends_with(['.', '!', '?']) { begun } else { format!("{begun}.") }
+}
+
 /// At most three digits after the point, none needless.
 pub(super) fn short(value: f64) -> String {
     let text = number(value, 3);
@@ -165,6 +225,32 @@ mod tests {
     }
 
     #[test]
+    fn both_ends_of_a_band_name_their_unit_where_it_differs() {
+        assert_eq!(band(80.0, 15_000.0), "80\u{a0}Hz to 15\u{a0}kHz");
+        assert_eq!(band(0.0, 12.0), "0 to 12\u{a0}Hz");
+        assert_eq!(band(0.0, 2000.0), "0 to 2\u{a0}kHz");
+        assert_eq!(band(1000.0, 2000.0), "1 to 2\u{a0}kHz");
+    }
+
+    #[test]
+    fn no_frequency_is_told_finer_than_a_sample_clock_holds_it() {
+        assert_eq!(deviation(61e-9), "within 0.00001 Hz");
+        assert_eq!(deviation(0.0083), "± 0.0083 Hz");
+        assert_eq!(deviation(0.2), "± 0.20 Hz");
+        assert_eq!(noise_alone(6.8e-6), "noise alone would show less than 0.00001 Hz");
+        assert_eq!(noise_alone(5.6e-5), "noise alone would show ± 0.000056 Hz");
+    }
+
+    #[test]
+    fn notes_become_sentences_and_names_stay_as_they_are() {
+        assert_eq!(sentence("the line is taken as settled"), "The line is taken as settled.");
+        assert_eq!(sentence("order 2: in the noise"), "Order 2: in the noise.");
+        assert_eq!(sentence("gauge.wav was cut short"), "gauge.wav was cut short.");
+        assert_eq!(sentence("26 s see little."), "26 s see little.");
+        assert_eq!(sentence(""), "");
+    }
+
+    #[test]
     fn full_scale_sine_is_full_scale_over_root_two() {
         assert!((volts_rms(0.0, 2.0) - 2.0_f64.sqrt()).abs() < 1e-12);
     }
@@ -179,7 +265,7 @@ mod tests {
         #[test]
         fn no_figure_ever_reads_as_computer_speech(bits in any::<u64>()) {
             let value = f64::from_bits(bits);
-            for text in [decibel(value), dbfs(value), si(value, "V", 3), hertz(value), hertz_short(value), small_hertz(value), duration(value)] {
+            for text in [decibel(value), dbfs(value), si(value, "V", 3), hertz(value), hertz_short(value), small_hertz(value), duration(value), deviation(value), noise_alone(value), band(0.0, value)] {
                 let lower = text.to_lowercase();
                 prop_assert!(!lower.contains("nan") && !lower.contains("inf"), "{value}: {text}");
             }

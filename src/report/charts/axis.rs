@@ -21,7 +21,12 @@ pub(super) struct Axis {
     /// Marks with their labels; an empty label is a line only.
     marks: Vec<(f64, String)>,
     title: String,
+    /// Labels have at least the room of this one, so that panels over each other line up.
+    widest: &'static str,
 }
+
+/// Four digits and a sign.
+const WIDEST: &str = "−100";
 
 impl Axis {
     /// A logarithmic frequency axis in hertz.
@@ -49,7 +54,14 @@ impl Axis {
                 marks.push((value, label));
             }
         }
-        Self { from, to, layout: Layout::Logarithmic, marks, title: "Frequency (Hz)".to_owned() }
+        Self {
+            from,
+            to,
+            layout: Layout::Logarithmic,
+            marks,
+            title: "Frequency (Hz)".to_owned(),
+            widest: WIDEST,
+        }
     }
 
     /// An even axis over at least this range, its ends moved out to whole steps.
@@ -65,7 +77,13 @@ impl Axis {
             layout: Layout::Linear,
             marks,
             title: title.to_owned(),
+            widest: WIDEST,
         }
+    }
+
+    /// The same axis with room for labels as wide as this one.
+    pub fn with_room_for(self, widest: &'static str) -> Self {
+        Self { widest, ..self }
     }
 
     /// An even axis that ends exactly where told, with marks on whole steps between.
@@ -81,7 +99,14 @@ impl Axis {
     pub fn places(labels: Vec<String>, title: &str) -> Self {
         let count = labels.len().max(1);
         let marks = labels.into_iter().enumerate().map(|(n, label)| (n as f64, label)).collect();
-        Self { from: -0.5, to: count as f64 - 0.5, layout: Layout::Linear, marks, title: title.to_owned() }
+        Self {
+            from: -0.5,
+            to: count as f64 - 0.5,
+            layout: Layout::Linear,
+            marks,
+            title: title.to_owned(),
+            widest: WIDEST,
+        }
     }
 
     /// Lower and upper end.
@@ -153,8 +178,7 @@ impl<'c, 'a> Frame<'c, 'a> {
     pub fn lay(canvas: &'c Canvas<'a>, top: f64, bottom: f64, x: Axis, y: Axis) -> Self {
         let size = canvas.size.type_size;
         let title_room = if y.title.is_empty() { 0.0 } else { size * 1.5 };
-        // Room for four digits and a sign, so that panels over each other line up.
-        let left = title_room + y.label_width(size).max(text_width("−100", size)) + size * 1.1;
+        let left = title_room + y.label_width(size).max(text_width(y.widest, size)) + size * 1.1;
         let label_half = x.marks.last().map_or(0.0, |(_, label)| text_width(label, size) / 2.0);
         let right = canvas.size.width - label_half.max(size * 1.2);
         let below = size * 1.6 + if x.title.is_empty() { 0.0 } else { size * 1.5 };
@@ -288,8 +312,13 @@ impl<'c, 'a> Frame<'c, 'a> {
             (left + width + 2.0, y + size * 0.62),
             stroke(PAPER, 0.0).filled(),
         );
-        let look = Type { size, ..self.canvas.plain(Anchor::Start, color) };
-        self.canvas.text(text, (left, y), look);
+        // The width is an estimate: text keeps to the side it was placed by.
+        let x = match anchor {
+            Anchor::Start => left,
+            Anchor::Middle => left + width / 2.0,
+            Anchor::End => left + width,
+        };
+        self.canvas.text(text, (x, y), Type { size, ..self.canvas.plain(anchor, color) });
     }
 }
 

@@ -21,7 +21,7 @@ pub(super) fn chart(material: &Material, size: Size) -> Chart {
         )
     };
     let drowned = if residual.iter().any(|r| r.at_noise_floor) {
-        " An open arrow under a lozenge: the rest drowns in the noise, the true level is at most this."
+        " An open arrow under a lozenge: what is left is in the noise, and its true level is at most this."
     } else {
         ""
     };
@@ -49,7 +49,8 @@ fn paint(residual: &[Residual], canvas: &Canvas) {
             levels.iter().copied().fold(f64::NEG_INFINITY, f64::max),
         )
     };
-    let x = Axis::places(labels(residual, canvas.size), "Order and frequency");
+    let title = if names_frequencies(residual, canvas.size) { "Order and frequency" } else { "Order" };
+    let x = Axis::places(labels(residual, canvas.size), title);
     let frame =
         Frame::lay(canvas, top, canvas.size.height, x, Axis::even(low - 4.0, high + 4.0, 7, "Level (dBFS)"));
     for (place, harmonic) in residual.iter().enumerate() {
@@ -62,13 +63,18 @@ fn paint(residual: &[Residual], canvas: &Canvas) {
     frame.close();
 }
 
+/// Whether there is room for the frequencies too.
+fn names_frequencies(residual: &[Residual], size: Size) -> bool {
+    (size.width - 90.0) / residual.len().max(1) as f64 > size.type_size * 7.5
+}
+
 /// Order and frequency where there is room, the order alone where there is not.
 fn labels(residual: &[Residual], size: Size) -> Vec<String> {
-    let room = (size.width - 90.0) / residual.len().max(1) as f64;
+    let frequencies = names_frequencies(residual, size);
     residual
         .iter()
         .map(|r| {
-            if room > size.type_size * 7.5 {
+            if frequencies {
                 format!("{} · {}", r.order, hertz_short(r.frequency_hz.round()).replace('\u{a0}', " "))
             } else {
                 r.order.to_string()

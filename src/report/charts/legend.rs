@@ -13,6 +13,8 @@ pub(super) enum Sign {
     BeforeCurve,
     /// A thick line: after, or nominal.
     AfterCurve,
+    /// A thin line: before.
+    BeforeLine,
     /// A round dot: before.
     BeforeDot,
     /// A lozenge: after.
@@ -27,7 +29,12 @@ pub(super) enum Sign {
     Asked,
     /// A dashed line of this colour.
     Dashed(RGBColor),
+    /// A dotted line of this colour.
+    Dotted(RGBColor),
 }
+
+/// Length of a dot of a dotted line, and of the gap after it.
+pub(super) const DOTS: (f64, f64) = (2.0, 4.0);
 
 /// Writes title and key from the top of the picture; gives the height they took.
 pub(super) fn head(canvas: &Canvas, title: &str, series: &[(Sign, &str)]) -> f64 {
@@ -60,6 +67,7 @@ fn draw_sign(canvas: &Canvas, sign: Sign, x: f64, y: f64, width: f64) {
             canvas.line(&[(x, y - half * 0.6), (x + width, y - half * 0.6)], stroke(BEFORE, 1.3));
         }
         Sign::AfterCurve => canvas.line(&across, stroke(AFTER, 2.4)),
+        Sign::BeforeLine => canvas.line(&across, stroke(BEFORE, 1.6)),
         Sign::BeforeDot => canvas.dot(middle, 4.5, BEFORE),
         Sign::AfterLozenge => canvas.lozenge(middle, 6.0, AFTER),
         Sign::Band => canvas.rectangle((x, y - half), (x + width, y + half), WASH.filled_style()),
@@ -67,6 +75,7 @@ fn draw_sign(canvas: &Canvas, sign: Sign, x: f64, y: f64, width: f64) {
         Sign::KeepRail => rail(canvas, x, x + width, y - half, y + half),
         Sign::Asked => asked(canvas, x + 2.0, x + width - 2.0, y + half * 0.8),
         Sign::Dashed(color) => canvas.dashed(&across, 6.0, 4.0, stroke(color, 1.8)),
+        Sign::Dotted(color) => canvas.dashed(&across, DOTS.0, DOTS.1, stroke(color, 1.8)),
     }
 }
 

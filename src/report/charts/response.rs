@@ -1,11 +1,11 @@
 //! Response with the band of the builds, keep bands and targets drawn in.
 
 use super::axis::{Axis, Frame};
-use super::canvas::{AFTER, Anchor, Canvas, KEEP, Point, Size, TARGET, WASH, draw, stroke};
+use super::canvas::{AFTER, Anchor, Canvas, KEEP, Point, Size, TARGET, WASH, draw, stroke, text_width};
 use super::legend::{Sign, asked, head, rail};
 use super::{Chart, Material};
 use crate::plan::Predicted;
-use crate::report::wording::{hertz_short, short};
+use crate::report::wording::{self, short};
 
 const TITLE: &str = "Response of the filter, and what 95 % of builds do";
 
@@ -26,7 +26,7 @@ pub(super) fn chart(material: &Material, size: Size) -> Chart {
     );
     let caption =
         "0 dB is the line without the filter. The lower panel is the upper one close up, so that the \
-                   loss allowed in the keep band can be seen."
+                   loss allowed in the keep band can be seen. The orders asked for are named along the lower edge."
             .to_owned();
     let svg = draw(size.tall(1.4), TITLE, &description, |canvas| paint(material, canvas));
     Chart { file: "response.svg", title: TITLE, description, caption, svg }
@@ -98,7 +98,10 @@ fn whole(material: &Material, canvas: &Canvas, top: f64, bottom: f64) {
     let lowest = values.iter().copied().fold(-10.0, f64::min).max(DEEPEST_DB);
     let highest = values.iter().copied().fold(0.0, f64::max);
     let x = Axis::frequency(from_hz, to_hz, canvas.size.is_narrow());
-    let frame = Frame::lay(canvas, top, bottom, x, Axis::exact(lowest - 4.0, highest + 4.0, 6, "Gain (dB)"));
+    // Below the deepest curve there is room for the names of the targets.
+    let names = 0.1 * (highest - lowest);
+    let y = Axis::exact(lowest - 3.0 - names, highest + 4.0, 6, "Gain (dB)");
+    let frame = Frame::lay(canvas, top, bottom, x, y);
     draw_curves(material, &frame);
     for keep in &design.keep {
         let (left, right) = (frame.x_at(keep.from_hz), frame.x_at(keep.to_hz));
@@ -110,7 +113,7 @@ fn whole(material: &Material, canvas: &Canvas, top: f64, bottom: f64) {
 
 fn mark_targets(material: &Material, frame: &Frame) {
     let size = frame.canvas.size.type_size;
-    let mut free_from = f64::NEG_INFINITY;
+    let (mut free_from, mut named) = (f64::NEG_INFINITY, 0);
     let wanted: Vec<(&Predicted, f64)> =
         material.plan.design.predicted.iter().filter_map(|p| Some((p, p.target_db?))).collect();
     for (predicted, target_db) in wanted.into_iter().filter(|(p, _)| frame.shows_x(p.frequency_hz)) {
@@ -121,12 +124,15 @@ fn mark_targets(material: &Material, frame: &Frame) {
         let right = frame.x_at(material.plan.centre_hz * order + reach).max(centre + LEAST_BAR);
         let y = frame.y_at(-target_db);
         asked(frame.canvas, left, right, y);
-        if centre >= free_from {
-            let text = format!("order {}", predicted.order);
-            let look =
-                super::canvas::Type { size: size * 0.92, ..frame.canvas.plain(Anchor::Middle, TARGET) };
-            frame.canvas.text(&text, (centre, (y - size * 1.25).max(frame.from.1 + size)), look);
-            free_from = centre + size * 4.6;
+        let text = match named {
+            0 => format!("order {}", predicted.order),
+            _ => predicted.order.to_string(),
+        };
+        let half = text_width(&text, size) / 2.0;
+        if centre - half >= free_from {
+            frame.note(&text, (centre, frame.to.1 - size), Anchor::Middle, TARGET);
+            free_from = centre + half + size * 0.4;
+            named += 1;
         }
     }
 }
@@ -143,21 +149,18 @@ fn close_up(material: &Material, canvas: &Canvas, top: f64, bottom: f64) {
     let left = if first > from_hz { (first / 1.6).max(from_hz) } else { from_hz };
     let x =
         Axis::frequency(left, (edge * 1.6).clamp(left * 2.0, to_hz.max(left * 2.0)), canvas.size.is_narrow());
-    let y = Axis::even(-1.6 * reach, 1.25 * allowed, 5, "Gain (dB)");
+    // Above the upper rail there is room for what it says.
+    let y = Axis::exact(-1.6 * reach, allowed + 0.3 * (allowed + reach), 5, "Gain (dB)");
     let frame = Frame::lay(canvas, top, bottom, x, y);
     draw_curves(material, &frame);
     for keep in &design.keep {
         let (left, right) = (frame.x_at(keep.from_hz), frame.x_at(keep.to_hz));
         rail(canvas, left, right, frame.y_at(keep.allowed_db), frame.y_at(-keep.allowed_db));
-        let text = format!(
-            "keep {} to {} within {} dB",
-            short(keep.from_hz),
-            hertz_short(keep.to_hz),
-            short(keep.allowed_db)
-        );
+        let text =
+            format!("keep {} within {} dB", wording::band(keep.from_hz, keep.to_hz), short(keep.allowed_db));
         frame.note(
             &text,
-            ((left + right) / 2.0, frame.y_at(-keep.allowed_db) + canvas.size.type_size * 1.1),
+            ((left + right) / 2.0, frame.y_at(keep.allowed_db) - canvas.size.type_size * 0.9),
             Anchor::Middle,
             KEEP,
         );

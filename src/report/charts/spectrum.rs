@@ -1,10 +1,10 @@
 //! Spectrum before and after, with the harmonics marked.
 
 use super::axis::{Axis, Frame};
-use super::canvas::{AFTER, Anchor, BEFORE, BEFORE_WASH, Canvas, INK, Point, Size, draw, stroke};
+use super::canvas::{AFTER, Anchor, BEFORE, BEFORE_WASH, Canvas, INK, Point, Size, draw, stroke, text_width};
 use super::legend::{Sign, head};
 use super::{Chart, Material};
-use crate::analysis::Spectrum;
+use crate::analysis::{Harmonic, Spectrum};
 use crate::report::wording::{counted, hertz, hertz_short};
 
 const TITLE: &str = "Spectrum of the recording, before and after the filter";
@@ -16,8 +16,9 @@ pub(super) fn chart(material: &Material, size: Size) -> Chart {
     let description = describe(material);
     let resolution = hertz_short(material.spectrum_before.resolution_hz);
     let caption = format!(
-        "Each line of the spectrum is {resolution} wide. Level 0 dBFS is the RMS of a sine that just reaches \
-         full scale. The numbers over the dots are the orders of the harmonics."
+        "Lines of one frequency read their level; noise reads its power in a bandwidth of {resolution}, so that the \
+         dot of a weak harmonic can lie below the curve. 0 dBFS is the RMS of a sine that just reaches full \
+         scale. The numbers over the dots are the orders of the harmonics."
     );
     let svg = draw(size, TITLE, &description, |canvas| paint(material, canvas));
     Chart { file: "spectrum.svg", title: TITLE, description, caption, svg }
@@ -27,8 +28,8 @@ fn describe(material: &Material) -> String {
     let harmonics = &material.analysis.harmonics;
     match material.analysis.mains.frequency_hz {
         Some(frequency) if !harmonics.is_empty() => format!(
-            "Level against frequency on a logarithmic axis. {} of {} stand out of the curve before the filter; \
-             the curve after it lies below it there.",
+            "Level against frequency on a logarithmic axis, before the filter and after it. {} of {} are marked, \
+             with a dot before the filter and a lozenge after it.",
             counted(harmonics.len(), "harmonic", "harmonics"),
             hertz(frequency),
         ),
@@ -94,7 +95,7 @@ fn axes(material: &Material, size: Size) -> (Axis, Axis) {
     let lowest = harmonics.iter().copied().fold(floor, f64::min).max(highest - 140.0);
     (
         Axis::frequency(from_hz, to_hz, size.is_narrow()),
-        Axis::even(lowest - 3.0, highest + 8.0, if size.is_narrow() { 8 } else { 10 }, "Level (dBFS)"),
+        Axis::exact(lowest - 3.0, highest + 8.0, if size.is_narrow() { 8 } else { 10 }, "Level (dBFS)"),
     )
 }
 
@@ -133,27 +134,60 @@ fn flush(column: &mut Vec<(f64, f64)>, out: &mut Vec<(f64, f64)>) {
 }
 
 fn mark_harmonics(material: &Material, frame: &Frame) {
-    let size = frame.canvas.size.type_size;
-    let mut free_from = f64::NEG_INFINITY;
-    for harmonic in material.analysis.harmonics.iter().filter(|h| frame.shows_x(h.frequency_hz)) {
+    let shown = || material.analysis.harmonics.iter().filter(|h| frame.shows_x(h.frequency_hz));
+    let mut marks = Vec::new();
+    for harmonic in shown() {
         let residual = material.simulation.residual.iter().find(|r| r.order == harmonic.order);
         let before = frame.at(harmonic.frequency_hz, harmonic.level_dbfs);
         if let Some(residual) = residual.filter(|r| r.after_dbfs.is_finite()) {
             let after = frame.at(harmonic.frequency_hz, residual.after_dbfs);
             frame.canvas.dashed(&[before, after], 2.0, 2.5, stroke(INK, 0.8));
             frame.canvas.lozenge(after, 4.6, AFTER);
+            marks.push(square(after, 5.0, 5.0));
         }
         frame.canvas.dot(before, 3.4, BEFORE);
-        // Orders that crowd each other keep their dots and lose their numbers.
-        if before.0 >= free_from {
-            let label = harmonic.order.to_string();
-            frame.canvas.label(
-                &label,
-                (before.0, (before.1 - size * 0.95).max(frame.from.1 + size * 0.6)),
-                Anchor::Middle,
-                INK,
-            );
-            free_from = before.0 + size * (0.9 + 0.5 * label.len() as f64);
-        }
+        marks.push(square(before, 4.0, 4.0));
+    }
+    let mut by_level: Vec<_> = shown().collect();
+    by_level.sort_by(|a, b| b.level_dbfs.total_cmp(&a.level_dbfs));
+    for harmonic in by_level {
+        number_harmonic(frame, harmonic, &mut marks);
+    }
+}
+
+/// Writes the order over its dot, unless it would cover another mark: harmonics
+/// that crowd each other keep their dots and lose their numbers, the weak ones first.
+fn number_harmonic(frame: &Frame, harmonic: &Harmonic, marks: &mut Vec<[f64; 4]>) {
+    let size = frame.canvas.size.type_size;
+    let label = harmonic.order.to_string();
+    let (x, y) = frame.at(harmonic.frequency_hz, harmonic.level_dbfs);
+    let at = (x, (y - size).max(frame.from.1 + size * 0.7));
+    let place = square(at, text_width(&label, size) / 2.0, size * 0.45);
+    if marks.iter().all(|mark| apart(mark, &place)) {
+        frame.note(&label, at, Anchor::Middle, INK);
+        marks.push(place);
+    }
+}
+
+/// Left, top, right and bottom of a box about its middle.
+fn square((x, y): Point, half_width: f64, half_height: f64) -> [f64; 4] {
+    [x - half_width, y - half_height, x + half_width, y + half_height]
+}
+
+/// Whether two boxes have no point in common.
+fn apart(a: &[f64; 4], b: &[f64; 4]) -> bool {
+    a[2] < b[0] || b[2] < a[0] || a[3] < b[1] || b[3] < a[1]
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+
+    #[test]
+    fn marks_that_touch_are_not_apart() {
+        let mark = square((10.0, 10.0), 4.0, 4.0);
+        assert!(!apart(&mark, &square((15.0, 10.0), 2.0, 2.0)));
+        assert!(apart(&mark, &square((17.0, 10.0), 2.0, 2.0)));
+        assert!(apart(&mark, &square((10.0, 2.0), 2.0, 3.0)));
     }
 }

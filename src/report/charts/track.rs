@@ -4,10 +4,10 @@ use plotters::style::RGBColor;
 
 use super::axis::{Axis, Frame};
 use super::canvas::{AFTER, Anchor, BEFORE, Canvas, INK, Size, TARGET, WASH, WASH_DEEP, draw, stroke};
-use super::legend::{Filled, Sign, head};
+use super::legend::{DOTS, Filled, Sign, head};
 use super::{Chart, Material};
 use crate::analysis::TrackPoint;
-use crate::report::wording::{hertz, small_hertz};
+use crate::report::wording::{duration, hertz, small_hertz};
 
 const TITLE: &str = "Frequency of the fundamental against time";
 
@@ -36,41 +36,67 @@ pub(super) fn chart(material: &Material, size: Size) -> Chart {
         }
         _ => "No frequency of the mains could be followed on this recording.".to_owned(),
     };
-    let caption = "Whiskers are twice the standard error of each point. The wide band is what the filter was \
-                   designed for, the inner one what this recording shows; where that is small it is shown close up below. A minute's recording sees little of \
-                   what a grid does in a year."
-        .to_owned();
+    let caption = caption(material);
     let svg = draw(size.tall(1.2), TITLE, &description, |canvas| paint(material, canvas));
     Chart { file: "track.svg", title: TITLE, description, caption, svg }
 }
 
+/// What is to be known of the bands, the whiskers and the close-up, where they are drawn.
+fn caption(material: &Material) -> String {
+    let track = followed(material);
+    let duration_s = material.analysis.captures.iter().map(|c| c.duration_s).fold(0.0, f64::max);
+    let mut caption = "The wide band is what the filter was designed for".to_owned();
+    if material.analysis.mains.spread_hz.is_some() {
+        caption += ", the inner one holds the frequency for 95 % of this recording";
+    }
+    caption += ".";
+    if needs_close_up(material, &track) {
+        caption += " Below, the track close up.";
+    }
+    if (1..=MOST_WHISKERS).contains(&track.len()) {
+        caption += " Whiskers, where long enough to be seen, are twice the standard error of each point.";
+    }
+    caption + &format!(" A recording of {} sees little of what a grid does in a year.", duration(duration_s))
+}
+
+/// The points of the track that have a place.
+fn followed<'a>(material: &Material<'a>) -> Vec<&'a TrackPoint> {
+    let track = material.analysis.track.iter();
+    track.filter(|p| p.time_s.is_finite() && p.frequency_hz.is_finite()).collect()
+}
+
+/// Whether the track is so small a part of the whole range that it is drawn again.
+fn needs_close_up(material: &Material, track: &[&TrackPoint]) -> bool {
+    let (measured, whole) = (reach(track), whole(material, track));
+    track.len() > 1 && measured.1 - measured.0 < CLOSE_UP_BELOW * (whole.1 - whole.0)
+}
+
+/// Lowest and highest frequency of track and design together.
+fn whole(material: &Material, track: &[&TrackPoint]) -> (f64, f64) {
+    let measured = reach(track);
+    (measured.0.min(plan_low(material)), measured.1.max(plan_high(material)))
+}
+
 fn paint(material: &Material, canvas: &Canvas) {
     let mains = &material.analysis.mains;
-    let track: Vec<_> = material
-        .analysis
-        .track
-        .iter()
-        .filter(|p| p.time_s.is_finite() && p.frequency_hz.is_finite())
-        .collect();
+    let track = followed(material);
     let mut series = vec![(Sign::Band, "designed for")];
     if mains.spread_hz.is_some() {
-        series.push((Sign::InnerBand, "measured spread"));
+        series.push((Sign::InnerBand, "95 % of the time"));
     }
     if !track.is_empty() {
-        series.push((Sign::BeforeDot, "each window"));
+        let sign = if track.len() > MOST_WHISKERS { Sign::BeforeLine } else { Sign::BeforeDot };
+        series.push((sign, "measured"));
     }
     if mains.frequency_hz.is_some() {
         series.push((Sign::Dashed(INK), "mean"));
     }
-    series.push((Sign::Dashed(TARGET), "centre of the design"));
+    series.push((Sign::Dotted(TARGET), "centre of the design"));
     let top = head(canvas, TITLE, &series);
 
-    let design = (plan_low(material), plan_high(material));
-    let measured = reach(&track);
     let bottom = canvas.size.height;
-    let whole = (measured.0.min(design.0), measured.1.max(design.1));
-    let small = measured.1 - measured.0 < CLOSE_UP_BELOW * (whole.1 - whole.0);
-    if track.len() > 1 && small {
+    let (measured, whole) = (reach(&track), whole(material, &track));
+    if needs_close_up(material, &track) {
         let split = top + (bottom - top) * 0.5;
         panel(material, canvas, &track, whole, (top, split));
         panel(material, canvas, &track, measured, (split + canvas.size.type_size * 0.6, bottom));
@@ -111,13 +137,13 @@ fn panel(
     let (mains, plan) = (&material.analysis.mains, material.plan);
     let margin = 0.06 * (to - from);
     let last = track.iter().map(|p| p.time_s).fold(0.0, f64::max);
-    let duration = material.analysis.captures.iter().map(|c| c.duration_s).fold(last, f64::max);
+    let end_s = material.analysis.captures.iter().map(|c| c.duration_s).fold(last, f64::max);
     let frame = Frame::lay(
         canvas,
         top,
         bottom,
-        Axis::exact(0.0, duration, if canvas.size.is_narrow() { 5 } else { 8 }, "Time (s)"),
-        Axis::even(from - margin, to + margin, 5, "Frequency (Hz)"),
+        Axis::exact(0.0, end_s, if canvas.size.is_narrow() { 5 } else { 8 }, "Time (s)"),
+        Axis::even(from - margin, to + margin, 5, "Frequency (Hz)").with_room_for("400.000"),
     );
     let across = |y: f64| [(frame.from.0, frame.y_at(y)), (frame.to.0, frame.y_at(y))];
     let band = |low: f64, high: f64, color: RGBColor| {
@@ -128,7 +154,7 @@ fn panel(
         band(mean - spread, mean + spread, WASH_DEEP);
     }
     if frame.shows_y(plan.centre_hz) {
-        canvas.dashed(&across(plan.centre_hz), 2.0, 4.0, stroke(TARGET, 1.8));
+        canvas.dashed(&across(plan.centre_hz), DOTS.0, DOTS.1, stroke(TARGET, 1.8));
     }
     draw_track(&frame, track);
     if let Some(mean) = mains.frequency_hz.filter(|mean| frame.shows_y(*mean)) {
