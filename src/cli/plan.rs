@@ -5,7 +5,7 @@ use super::error::CliError;
 use super::table::{Table, decibels, wrapped};
 use super::{Ended, job, print_answer, single_file};
 use crate::analysis::Analysis;
-use crate::plan::{Design, Plan};
+use crate::plan::{Design, Plan, span};
 
 /// Designs, writes plan and netlist where asked, prints the plan.
 pub(super) fn run(arguments: &Arguments) -> Result<Ended, CliError> {
@@ -135,7 +135,7 @@ fn keep(design: &Design) -> String {
     let mut table = Table::new(&["Keep band", "Allowed", "Nominal", "95 % of builds"]);
     for band in &design.keep {
         table.row([
-            format!("{} to {} Hz", band.from_hz, band.to_hz),
+            span(band.from_hz, band.to_hz),
             format!("{} dB", band.allowed_db),
             decibels(band.loss_db, 2),
             decibels(band.loss_worst_db, 2),

@@ -5,7 +5,7 @@ use super::error::CliError;
 use super::folder::OutFolder;
 use super::table::{Table, decibels, wrapped};
 use super::{Ended, job, print_answer};
-use crate::plan::Plan;
+use crate::plan::{Plan, span};
 use crate::simulation::{Simulation, Start};
 
 /// The files that this command writes into its folder.
@@ -67,9 +67,8 @@ pub(super) fn text(plan: &Plan, simulation: &Simulation) -> String {
         text += &wrapped(
             "  Kept        ",
             &format!(
-                "{} to {} Hz {} {} at most, {} dB allowed{measured}",
-                band.from_hz,
-                band.to_hz,
+                "{} {} {} at most, {} dB allowed{measured}",
+                span(band.from_hz, band.to_hz),
                 if band.loss_db < -0.005 { "gains" } else { "loses" },
                 decibels(band.loss_db.abs(), 2),
                 band.allowed_db

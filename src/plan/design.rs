@@ -102,7 +102,7 @@ pub struct QWindow {
     pub q_min: f64,
     /// Largest Q that spread, coil and target allow.
     pub q_max: f64,
-    /// Loaded Q of the chosen design at this order, where it has one.
+    /// Loaded Q of the chosen design at this order, where single notches alone take it down.
     pub q_chosen: Option<f64>,
     /// What closes the window (`spread`, `coil`, `tolerance`, `keep band`), or `None` when open.
     pub closed_by: Option<String>,

@@ -15,7 +15,7 @@ mod shelf;
 mod trim;
 mod window;
 
-pub use brief::{BriefError, Centre, KeepBand, LineBrief, ReductionTarget};
+pub use brief::{BriefError, Centre, KeepBand, LineBrief, ReductionTarget, span};
 pub use builds::build;
 pub use design::*;
 pub use requirements::{OrderTask, Task};

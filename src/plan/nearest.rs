@@ -3,7 +3,7 @@
 use super::requirements::Task;
 use super::search::Made;
 use super::window::{least_q_for_bands, windows};
-use super::{Design, QWindow};
+use super::{Design, QWindow, span};
 use crate::parts::Stock;
 
 /// Share of the whole merit that is lost where a band loses twice what is allowed.
@@ -135,10 +135,10 @@ fn misses(design: &Design) -> Vec<String> {
     let orders = orders.chain(others);
     let bands = design.keep.iter().filter(|band| band.loss_worst_db.abs() > band.allowed_db).map(|band| {
         format!(
-            "{} to {} Hz loses {:.2} dB in 95 % of builds, {:.2} dB more than allowed",
-            band.from_hz,
-            band.to_hz,
-            band.loss_worst_db,
+            "{} {} {:.2} dB in 95 % of builds, {:.2} dB more than allowed",
+            span(band.from_hz, band.to_hz),
+            if band.loss_worst_db < 0.0 { "gains" } else { "loses" },
+            band.loss_worst_db.abs(),
             band.loss_worst_db.abs() - band.allowed_db
         )
     });
@@ -175,12 +175,11 @@ fn loss_that_meets_the_targets(made: &[Made], task: &Task) -> Option<String> {
         over(a).total_cmp(&over(b))
     })?;
     Some(format!(
-        "with all targets met on {}, the best network found loses {:.2} dB between {} and {} Hz: \
+        "with all targets met on {}, the best network found loses {:.2} dB in {}: \
          the loss allowed would have to rise from {} to {:.2} dB",
         counted_orders(task),
-        worst.loss_worst_db,
-        worst.from_hz,
-        worst.to_hz,
+        worst.loss_worst_db.abs(),
+        span(worst.from_hz, worst.to_hz),
         worst.allowed_db,
         worst.loss_worst_db.abs()
     ))

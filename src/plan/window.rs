@@ -2,6 +2,7 @@
 
 use super::design::{Design, QWindow};
 use super::requirements::{OrderTask, Task};
+use crate::network::kinds::kind_named;
 use crate::parts::Stock;
 
 /// Largest Q of a single notch that still takes D dB at a detuning of δ (a
@@ -70,14 +71,22 @@ fn window(
         };
         cause.to_owned()
     });
-    let q_chosen = design
-        .sections
-        .iter()
-        .flat_map(|section| &section.notches)
-        .filter(|notch| notch.order == order.order)
-        .map(|notch| notch.q)
-        .reduce(f64::min);
+    let q_chosen = chosen_q(design, order.order);
     QWindow { order: order.order, q_min, q_max, q_chosen, closed_by }
+}
+
+/// Lowest loaded Q of the single notches that take an order down; `None` where
+/// another kind of section has a part in it, whose Q says little by itself.
+fn chosen_q(design: &Design, order: u32) -> Option<f64> {
+    let notches =
+        design.sections.iter().flat_map(|section| section.notches.iter().map(move |notch| (section, notch)));
+    notches
+        .filter(|(_, notch)| notch.order == order)
+        .map(|(section, notch)| {
+            kind_named(&section.kind).filter(|kind| kind.is_single_notch()).map(|_| notch.q)
+        })
+        .reduce(|one, other| Some(one?.min(other?)))
+        .flatten()
 }
 
 /// Least Q of a notch at this order by the keep bands of the task, the loss allowed

@@ -11,7 +11,7 @@ use super::wording::{
     number, sentence, short, si, small_hertz, unbroken, with_unit,
 };
 use super::{CAUTIONS, Excerpt, Material, ReportError, bench, partslist, wav};
-use crate::plan::{Design, ReductionTarget, SectionSummary};
+use crate::plan::{Design, ReductionTarget};
 use crate::simulation::BeforeAfter;
 
 const TEMPLATE: &str = include_str!("page.html");
@@ -62,7 +62,7 @@ fn view(material: &Material) -> Value {
         builds_count => design.builds.count,
         builds_seed => design.builds.seed,
         windows => serialised(windows(material)),
-        windows_beside => plan.q_windows.iter().any(|w| !by_single_notch(design, w.order)),
+        windows_beside => plan.q_windows.iter().any(|w| w.q_chosen.is_none()),
         charts => serialised(pictures(material)),
         residual => serialised(residual(material)),
         any_in_noise => material.simulation.residual.iter().any(|r| r.at_noise_floor),
@@ -346,7 +346,6 @@ struct WindowRow {
 
 fn windows(material: &Material) -> Vec<WindowRow> {
     let q = |value: f64| if value == f64::INFINITY { "no bound".to_owned() } else { number(value, 2) };
-    let design = &material.plan.design;
     material
         .plan
         .q_windows
@@ -355,21 +354,10 @@ fn windows(material: &Material) -> Vec<WindowRow> {
             order: w.order,
             least: q(w.q_min),
             most: q(w.q_max),
-            chosen: w.q_chosen.filter(|_| by_single_notch(design, w.order)).map_or("–".to_owned(), q),
+            chosen: w.q_chosen.map_or("–".to_owned(), q),
             closed_by: w.closed_by.as_ref().map_or("open".to_owned(), |what| format!("closed by {what}")),
         })
         .collect()
-}
-
-/// Kinds of section that are one notch and nothing else: their Q can be held
-/// against the window of a single notch.
-const SINGLE_NOTCHES: [&str; 4] = ["shunt trap", "series tank", "bridged-T", "twin-T"];
-
-/// Whether an order is taken down by single notches alone.
-fn by_single_notch(design: &Design, order: u32) -> bool {
-    let notches = |s: &SectionSummary| s.order == Some(order) || s.notches.iter().any(|n| n.order == order);
-    let mut takers = design.sections.iter().filter(|s| notches(s)).peekable();
-    takers.peek().is_some() && takers.all(|s| SINGLE_NOTCHES.contains(&s.kind.as_str()))
 }
 
 #[derive(Serialize)]

@@ -16,7 +16,7 @@ use super::{
 };
 use crate::analysis::{Analysis, OrderLevel, PhaseTrack, Spectrum};
 use crate::capture::{Capture, CaptureError, SampleFormat, WavWriter, Written};
-use crate::plan::{Design, LineBrief};
+use crate::plan::{Design, LineBrief, span};
 
 /// Samples of all channels read at a time.
 const BLOCK_SAMPLES: usize = 1 << 16;
@@ -365,8 +365,8 @@ impl Job<'_> {
         }];
         let rate_hz = kernel.sample_rate_hz();
         notes.push(format!(
-            "exact from 0 Hz to {:.0} Hz (0.45 of the sample rate); above, the response is led over to a real value",
-            EXACT_UP_TO * rate_hz
+            "the samples are true to the network over {} (to 0.45 of the sample rate), and near it above",
+            span(0.0, EXACT_UP_TO * rate_hz)
         ));
         if self.track.is_none() {
             notes.push("no hum was found in this recording: no residual can be measured".to_owned());
@@ -392,7 +392,8 @@ impl Job<'_> {
             let KeepMeasured { from_hz, to_hz, allowed_db, measured_db, loss_db } = band;
             if measured_db.is_some_and(|db| db > *allowed_db) && loss_db.abs() <= *allowed_db {
                 notes.push(format!(
-                    "keep band {from_hz} Hz to {to_hz} Hz: the samples lose more than the response does; hum or other lines in the band went with it"
+                    "keep band {}: the samples lose more than the response does; hum or other lines in the band went with it",
+                    span(*from_hz, *to_hz)
                 ));
             }
         }

@@ -3,7 +3,7 @@
 use std::f64::consts::SQRT_2;
 
 use super::{KeepMeasured, Residual};
-use crate::plan::{Design, LineBrief, ReductionTarget};
+use crate::plan::{Design, LineBrief, ReductionTarget, span};
 
 /// How much a loss may be over the allowed one and still be the rounding of it, decibels.
 const ROUNDING_DB: f64 = 1e-6;
@@ -78,7 +78,8 @@ fn keep_miss(band: &KeepMeasured) -> Option<String> {
     (loss_db.abs() > allowed_db + ROUNDING_DB).then(|| {
         let what = if loss_db < 0.0 { "gain" } else { "loss" };
         format!(
-            "keep band {from_hz} Hz to {to_hz} Hz: {what} of {:.3} dB, {allowed_db} dB is allowed",
+            "keep band {}: {what} of {:.3} dB, {allowed_db} dB is allowed",
+            span(from_hz, to_hz),
             loss_db.abs()
         )
     })

@@ -58,4 +58,8 @@ impl Kind for BridgedT {
         let coil_q = TAU * frequency_hz * coil.value_si / coil.series_resistance_ohm;
         vec![Notch { frequency_hz, q: coil_q / 2.0, depth_db: None }]
     }
+
+    fn is_single_notch(&self) -> bool {
+        true
+    }
 }

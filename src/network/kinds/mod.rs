@@ -60,6 +60,12 @@ pub trait Kind: Sync {
     /// low-pass or high-pass. `values` are those of the draft's slots, the
     /// resistances those that the section sees towards source and load.
     fn notches(&self, values: &[SlotValue], source_ohm: f64, load_ohm: f64) -> Vec<Notch>;
+
+    /// Whether a section is one notch in an otherwise flat response and nothing
+    /// else, so that its Q can be held against the window of a single notch.
+    fn is_single_notch(&self) -> bool {
+        false
+    }
 }
 
 /// A line to be reduced.

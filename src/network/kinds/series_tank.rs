@@ -53,4 +53,8 @@ impl Kind for SeriesTank {
             depth_db: Some(20.0 * ((around_ohm + own_ohm) / around_ohm).log10()),
         }]
     }
+
+    fn is_single_notch(&self) -> bool {
+        true
+    }
 }

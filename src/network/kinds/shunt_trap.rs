@@ -71,4 +71,8 @@ impl Kind for ShuntTrap {
             depth_db: Some(20.0 * (around_ohm / lost_ohm).log10()),
         }]
     }
+
+    fn is_single_notch(&self) -> bool {
+        true
+    }
 }

@@ -71,6 +71,10 @@ impl Kind for TwinT {
             depth_db: None,
         }]
     }
+
+    fn is_single_notch(&self) -> bool {
+        true
+    }
 }
 
 /// Loaded Q of the symmetrical twin-T of R between R_s and R_l.

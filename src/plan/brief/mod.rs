@@ -131,6 +131,12 @@ pub enum BriefError {
     Stock(#[from] PartsError),
 }
 
+/// A stretch of frequencies as one would say it: `80 Hz to 15 kHz`.
+pub fn span(from_hz: f64, to_hz: f64) -> String {
+    let [from, to] = [from_hz, to_hz].map(|hz| print(hz, Unit::Hertz));
+    format!("{from} to {to}")
+}
+
 impl KeepBand {
     /// The parts of the band outside ± `guard_hz` of each line, rising, as
     /// (from, to) in hertz: where loss is judged. Empty when nothing is left.
