@@ -8,7 +8,7 @@ use super::folder::OutFolder;
 use super::table::wrapped;
 use super::{Ended, analyse, job, plan, print_answer, simulate};
 use crate::analysis::Analysis;
-use crate::plan::Plan;
+use crate::plan::{KeepResult, Plan};
 use crate::report;
 use crate::simulation::{Simulation, Start};
 
@@ -82,16 +82,21 @@ fn verdict(plan: &Plan, heard: &Simulation) -> String {
             "Met without a filter: no hum found here needs reducing for this brief. Buy nothing.",
         );
     }
-    let loss_db = heard.keep.iter().map(|band| band.loss_db.abs()).max_by(f64::total_cmp);
-    let met = if plan.design.met && heard.met { "Met" } else { "Not met" };
-    let asked: Vec<_> = plan.design.predicted.iter().filter(|order| order.target_db.is_some()).collect();
+    let design = &plan.design;
+    let met = if design.met && heard.met { "Met" } else { "Not met" };
+    let asked: Vec<_> = design.predicted.iter().filter(|order| order.target_db.is_some()).collect();
     let nominal: Vec<f64> = asked.iter().map(|order| order.reduction_db).collect();
-    let worst_db = asked.iter().map(|order| order.reduction_worst_db).min_by(f64::total_cmp);
-    let takes = worst_db.map_or("has no hum to take off".to_owned(), |worst_db| {
-        let nominal = plan::from_least_to_most(&nominal);
-        format!("takes {nominal} dB off the hum asked for ({worst_db:.1} dB or more in 95 % of builds)")
-    });
-    let costs =
-        loss_db.map_or(String::new(), |db| format!(" and costs the wanted signal {db:.2} dB at most"));
-    wrapped("", &format!("{met}: {}; it {takes}{costs}.", plan.design.summary))
+    let least_db = asked.iter().map(|order| order.reduction_worst_db).fold(f64::INFINITY, f64::min);
+    let most = |losses: fn(&KeepResult) -> f64| design.keep.iter().map(losses).fold(0.0, f64::max);
+    wrapped(
+        "",
+        &format!(
+            "{met}: {}; it takes {} dB off the hum asked for and costs the wanted signal {:.2} dB at most. 95 % of \
+             builds take off {least_db:.1} dB or more and cost {:.2} dB or less.",
+            design.summary,
+            plan::from_least_to_most(&nominal),
+            most(|band| band.loss_db.abs()),
+            most(|band| band.loss_worst_db.abs()),
+        ),
+    )
 }

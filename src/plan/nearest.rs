@@ -175,7 +175,7 @@ fn loss_that_meets_the_targets(made: &[Made], task: &Task) -> Option<String> {
         over(a).total_cmp(&over(b))
     })?;
     Some(format!(
-        "with all targets met on {}, the best network found loses {:.2} dB in {}: \
+        "with all targets met on {}, the best network found loses {:.2} dB from {}: \
          the loss allowed would have to rise from {} to {:.2} dB",
         counted_orders(task),
         worst.loss_worst_db.abs(),
