@@ -134,6 +134,9 @@ fn the_tide_gauge_brief_is_met_by_what_the_drawer_holds() {
     assert!(reduction_db >= 40.0 && loss_db <= 0.5, "{reduction_db} dB, {loss_db} dB");
     assert_eq!(plan.design.builds.count, 1000);
     assert!(plan.alternatives.len() >= 2);
+    // A low-pass with a notch in it is no single notch: its Q stands in no window.
+    assert_eq!(plan.design.sections[0].kind, "notched low-pass");
+    assert!(plan.q_windows.iter().all(|window| window.q_chosen.is_none()));
     for design in std::iter::once(&plan.design).chain(&plan.alternatives) {
         for part in &design.circuit.parts {
             assert!(is_listed(part, &stock), "{} {} is not in the list", part.reference, part.value);
