@@ -5,6 +5,7 @@
 //! Pass 3 measures the levels along that track, and other supplies.
 
 use super::causes::likely_causes;
+use super::coherent::{Faint, faint_combs};
 use super::comb::{Candidate, candidates, candidates_besides};
 use super::findings::{Analysis, CaptureSummary, Harmonic, Mains, OtherSupply, TrackPoint};
 use super::folding::{folded_harmonics, is_half_rate};
@@ -13,7 +14,7 @@ use super::phasors::PhasorBank;
 use super::spectrum::{Spectrum, SpectrumMeter};
 use super::spread::{Wander, spread_about};
 use super::supplies::nearest_supply;
-use super::survey::{ChannelSurvey, Surveyed};
+use super::survey::{ChannelSurvey, SURVEY_TOP_HZ, Surveyed};
 use super::tracker::{Cells, Tracked, track};
 use super::verdict::Verdict;
 use super::{AnalyseOptions, AnalysisError, PhaseTrack};
@@ -37,6 +38,8 @@ const SHORTEST_S: f64 = 0.5;
 const WORTH_A_LOOK: f64 = 3.0;
 /// Share of the time for which another supply's line must be there.
 const OTHER_PRESENT: f64 = 0.9;
+/// RMS about the mean from which a channel is more than a constant.
+const SILENT: f64 = 1e-9;
 /// RMS wander, as a share of its frequency, up to which another supply's line is narrow.
 const OTHER_WANDER: f64 = 0.002;
 
@@ -124,7 +127,7 @@ fn analyse_one(
     let looked: Vec<(usize, Surveyed, Vec<Candidate>)> = surveys
         .into_iter()
         .map(|(channel, survey)| {
-            let found = if survey.rms > 1e-9 { candidates(&survey, rate_hz) } else { Vec::new() };
+            let found = if survey.rms > SILENT { candidates(&survey, rate_hz) } else { Vec::new() };
             (channel, survey, found)
         })
         .collect();
@@ -149,8 +152,8 @@ fn analyse_one(
         hum: None,
         notes: capture_notes(&survey, duration_s, options.channel.is_none() && format.channels > 1, channel),
     };
-    let best = best_of(&found).filter(|best| best.score >= WORTH_A_LOOK && duration_s >= SHORTEST_S);
-    let Some(best) = best else {
+    let best = if duration_s >= SHORTEST_S { likeliest(&survey, found) } else { None };
+    let Some(best) = &best else {
         let mut spectrum = SpectrumMeter::new(rate_hz, duration_s);
         read_channel(capture, channel, &mut |samples| spectrum.push(samples), &mut |p| {
             progress((1.0 + 2.0 * p) / 3.0);
@@ -196,6 +199,94 @@ fn analyse_one(
 
 fn best_of(found: &[Candidate]) -> Option<&Candidate> {
     found.iter().max_by(|a, b| a.score.total_cmp(&b.score))
+}
+
+/// The candidate whose lines, followed through the opening, say most.
+fn likeliest(survey: &Surveyed, found: Vec<Candidate>) -> Option<Candidate> {
+    if survey.rms <= SILENT {
+        return None;
+    }
+    let worth = found.into_iter().filter(|candidate| candidate.score >= WORTH_A_LOOK);
+    let segments = survey.ratios.len();
+    let faint = faint_combs(survey).into_iter().flat_map(Faint::and_its_third).map(|faint| Candidate {
+        path_hz: vec![faint.frequency_hz; segments],
+        score: 0.0,
+        power: 0.0,
+        orders: faint.orders,
+    });
+    let all: Vec<Candidate> = worth.chain(if segments > 0 { faint.collect() } else { Vec::new() }).collect();
+    let mut tried: Vec<Trial> =
+        all.into_par_iter().filter_map(|candidate| Trial::of(survey, candidate)).collect();
+    tried.sort_by(|a, b| b.verdict.evidence.total_cmp(&a.verdict.evidence));
+    let own_power = |trial: &Trial| -> f64 {
+        // Every third line of a railway's comb may be a public supply's.
+        let railway = trial.frequency_hz < 20.0;
+        trial.lines.iter().filter(|(k, _)| !railway || !k.is_multiple_of(3)).map(|(_, p)| p).sum()
+    };
+    let found = |trial: &Trial| trial.verdict.found;
+    let first = tried.iter().position(found).unwrap_or(0);
+    let public = |trial: &Trial| found(trial) && (40.0..70.0).contains(&trial.frequency_hz);
+    let chosen = match tried.iter().position(public) {
+        Some(i) if tried[first].frequency_hz < 20.0 && own_power(&tried[i]) > own_power(&tried[first]) => i,
+        _ => first,
+    };
+    // Of two accounts of one comb, the survey's own: the other was picked for its evidence.
+    let surveyed = |trial: &Trial| {
+        let apart = trial.frequency_hz / tried[chosen].frequency_hz - 1.0;
+        found(trial) && trial.candidate.score > 0.0 && apart.abs() < 0.005
+    };
+    let chosen = tried.iter().position(surveyed).unwrap_or(chosen);
+    (chosen < tried.len()).then(|| tried.swap_remove(chosen).candidate)
+}
+
+/// A candidate followed through the opening of the capture.
+struct Trial {
+    candidate: Candidate,
+    frequency_hz: f64,
+    verdict: Verdict,
+    /// Lasting orders and their mean squares.
+    lines: Vec<(u32, f64)>,
+}
+
+impl Trial {
+    fn of(survey: &Surveyed, candidate: Candidate) -> Option<Self> {
+        let rate_hz = survey.opening_rate_hz;
+        let frames = survey.opening.len() as u64;
+        let duration_s = frames as f64 / rate_hz;
+        let reference = reference_track(&candidate, &survey.times_s, duration_s);
+        let top_hz = SURVEY_TOP_HZ.min(TOP_SHARE * rate_hz);
+        let most = ((top_hz / candidate.mean_hz()) as u32).clamp(1, 24);
+        let orders: Vec<u32> = (1..=most).collect();
+        let mut gather = Gather::new(rate_hz, &reference, &orders, frames);
+        gather.push(&survey.opening);
+        let cells = gather.finish();
+        let tracked = track(&cells, &candidate.orders, reach_hz(survey, &candidate), duration_s)?;
+        let frequency_hz = mean_frequency_hz(&reference, &tracked, duration_s);
+        let verdict = Verdict::of(
+            &cells,
+            &tracked,
+            frequency_hz,
+            duration_s,
+            moved_hz(&reference, &tracked, survey.opening_rate_hz),
+        );
+        let lines = verdict.lasting.iter().map(|&k| (k, tracked.lines[k as usize - 1].power)).collect();
+        Some(Self { candidate, frequency_hz, verdict, lines })
+    }
+}
+
+/// How far off the fundamental may be from a candidate's.
+fn reach_hz(survey: &Surveyed, candidate: &Candidate) -> f64 {
+    (0.6 * survey.bin_hz).max(0.3 * candidate.mean_hz() / 50.0)
+}
+
+/// From the lowest to the highest frequency of the fundamental; 0 where that cannot be told.
+fn moved_hz(reference: &PhaseTrack, tracked: &Tracked, rate_hz: f64) -> f64 {
+    let cells = tracked.phases.time_s.iter().zip(&tracked.smoothed.omega);
+    let (low, high) = cells
+        .map(|(&t, omega)| reference_frequency_hz(reference, t) + omega / TAU)
+        .fold((f64::MAX, f64::MIN), |(low, high), f| (low.min(f), high.max(f)));
+    // At half the rate a line beats with its own image.
+    if is_half_rate(0.5 * (low + high), rate_hz) { 0.0 } else { high - low }
 }
 
 /// Pass 1 over one channel or all.
@@ -277,11 +368,10 @@ fn second_pass(
         progress,
     )?;
     let cells = gather.finish();
-    let reach_hz = (0.6 * survey.bin_hz).max(0.3 * best.mean_hz() / 50.0);
-    let tracked = track(&cells, &best.orders, reach_hz, duration_s);
+    let tracked = track(&cells, &best.orders, reach_hz(survey, best), duration_s);
     let verdict = tracked.as_ref().map(|tracked| {
         let frequency_hz = mean_frequency_hz(&reference, tracked, duration_s);
-        Verdict::of(&cells, tracked, frequency_hz, duration_s)
+        Verdict::of(&cells, tracked, frequency_hz, duration_s, moved_hz(&reference, tracked, rate_hz))
     });
     Ok(Second { reference, spectrum: spectrum.finish(), tracked, verdict })
 }
@@ -502,14 +592,18 @@ fn other_supply(candidate: &Candidate, cells: Cells, duration_s: f64) -> Option<
     let centre_hz = candidate.mean_hz();
     let tracked = track(&cells, &candidate.orders, 0.3 * centre_hz / 50.0, duration_s)?;
     let frequency_hz = centre_hz + tracked.advance.phase_rad / (TAU * duration_s);
-    let verdict = Verdict::of(&cells, &tracked, frequency_hz, duration_s);
+    let steady = PhaseTrack::constant(centre_hz, duration_s);
+    let verdict =
+        Verdict::of(&cells, &tracked, frequency_hz, duration_s, moved_hz(&steady, &tracked, f64::INFINITY));
     let supply = nearest_supply(frequency_hz).filter(|_| verdict.found)?;
     if !is_there_all_the_time(&cells, &tracked, &verdict, frequency_hz) {
         return None;
     }
     let strongest = verdict.lasting.iter().filter_map(|k| {
         let values = &cells.values[cells.orders.iter().position(|order| order == k)?];
-        Some(values.iter().map(|z| 0.5 * z.norm_sqr()).sum::<f64>() / values.len() as f64)
+        let read = values.iter().map(|z| 0.5 * z.norm_sqr()).sum::<f64>() / values.len() as f64;
+        let response = cells.response(f64::from(*k) * (frequency_hz - centre_hz));
+        Some(read / (response * response).max(0.1))
     });
     let level_dbfs = power_dbfs(strongest.fold(0.0, f64::max));
     let supply = OtherSupply { nominal_hz: supply.nominal_hz, frequency_hz, level_dbfs };
@@ -535,7 +629,7 @@ fn capture_notes(survey: &Surveyed, duration_s: f64, chosen: bool, channel: usiz
     if chosen {
         notes.push(format!("channel {} has the strongest hum and was analysed", channel + 1));
     }
-    if survey.rms <= 1e-9 {
+    if survey.rms <= SILENT {
         notes.push("the channel is silent, or holds nothing but a constant".to_owned());
     }
     if survey.clipped > 0 {

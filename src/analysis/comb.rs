@@ -204,7 +204,7 @@ impl<'a> View<'a> {
 }
 
 /// Low orders are the likelier ones.
-fn weight(order: u32) -> f64 {
+pub(super) fn weight(order: u32) -> f64 {
     1.0 / (1.0 + 0.05 * f64::from(order - 1))
 }
 

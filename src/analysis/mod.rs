@@ -2,6 +2,7 @@
 
 mod analyse;
 mod causes;
+mod coherent;
 mod comb;
 mod decimator;
 mod findings;

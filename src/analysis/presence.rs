@@ -17,6 +17,20 @@ pub(super) fn share_present(turned: &[Complex64]) -> f64 {
     present as f64 / count
 }
 
+/// Whether a line is there in nearly every cell. Along the mean phasor a struck
+/// note has nothing in the quieter cells; a line has its amplitude less noise, and
+/// how much noise, the component across the mean phasor tells.
+pub(super) fn is_there_throughout(turned: &[Complex64], mean: Complex64) -> bool {
+    let along = mean.conj() / mean.norm().max(1e-30);
+    let mut parts: Vec<f64> = turned.iter().map(|z| (z * along).re).collect();
+    let mut across: Vec<f64> = turned.iter().map(|z| (z * along).im.abs()).collect();
+    let last = parts.len() - 1;
+    parts.sort_by(f64::total_cmp);
+    across.sort_by(f64::total_cmp);
+    let (low, upper) = (parts[last / 5], parts[last * 3 / 5]);
+    low >= 0.3 * upper - 1.5 * across[across.len() / 2]
+}
+
 #[cfg(test)]
 mod tests {
     use super::*;

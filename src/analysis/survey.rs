@@ -10,6 +10,8 @@ use std::sync::Arc;
 pub(super) const SURVEY_TOP_HZ: f64 = 1250.0;
 /// Longest segment in seconds.
 const SEGMENT_S: f64 = 4.0;
+/// Length of the opening that is kept for a longer look, in seconds.
+const OPENING_S: f64 = 120.0;
 /// Most segments kept, whatever the length.
 const MOST_SEGMENTS: usize = 240;
 
@@ -30,6 +32,8 @@ pub(super) struct ChannelSurvey {
     powers: Vec<Vec<f32>>,
     times_s: Vec<f64>,
     taken: usize,
+    opening: Vec<f64>,
+    kept: usize,
 }
 
 /// What the first pass says of a channel.
@@ -52,6 +56,10 @@ pub(super) struct Surveyed {
     pub bin_hz: f64,
     /// Segments that count as independent.
     pub independent: f64,
+    /// The beginning of the capture at a lower rate.
+    pub opening: Vec<f64>,
+    /// That rate in hertz.
+    pub opening_rate_hz: f64,
 }
 
 impl ChannelSurvey {
@@ -79,6 +87,8 @@ impl ChannelSurvey {
             powers: Vec::new(),
             times_s: Vec::new(),
             taken: 0,
+            opening: Vec::new(),
+            kept: 0,
         }
     }
 
@@ -86,12 +96,14 @@ impl ChannelSurvey {
     pub fn push(&mut self, samples: &[f64]) {
         self.levels.push(samples);
         self.decimator.push(samples, &mut self.held);
+        self.keep_opening();
         self.take_segments();
     }
 
     /// Closes the survey.
     pub fn finish(mut self) -> Surveyed {
         self.decimator.finish(&mut self.held);
+        self.keep_opening();
         self.take_segments();
         let rate_hz = self.decimator.output_rate_hz();
         let overlap = self.segment as f64 / self.hop as f64;
@@ -108,13 +120,24 @@ impl ChannelSurvey {
             times_s: self.times_s,
             bin_hz: rate_hz / self.segment as f64,
             independent: independent.max(1.0),
+            opening: self.opening,
+            opening_rate_hz: rate_hz,
         }
+    }
+
+    /// Copies what the decimator has added to `held` since the last time.
+    fn keep_opening(&mut self) {
+        let most = (OPENING_S * self.decimator.output_rate_hz()) as usize;
+        let room = most.saturating_sub(self.opening.len());
+        self.opening.extend(self.held[self.kept..].iter().take(room));
+        self.kept = self.held.len();
     }
 
     fn take_segments(&mut self) {
         loop {
             let dropped = self.skip.min(self.held.len());
             self.held.drain(..dropped);
+            self.kept -= dropped;
             self.skip -= dropped;
             if self.skip > 0 || self.held.len() < self.segment {
                 return;
@@ -176,6 +199,9 @@ fn local_floor(power: &[f64], bin_hz: f64) -> Vec<f64> {
 #[derive(Default)]
 struct Levels {
     count: f64,
+    /// The first sample. Sums are taken of what differs from it, so that a
+    /// constant leaves nothing, not even rounding.
+    first: Option<f64>,
     sum: f64,
     squares: f64,
     high: FlatTop,
@@ -184,9 +210,12 @@ struct Levels {
 
 impl Levels {
     fn push(&mut self, samples: &[f64]) {
+        let Some(&start) = samples.first() else { return };
+        let first = *self.first.get_or_insert(start);
         for &x in samples {
-            self.sum += x;
-            self.squares += x * x;
+            let apart = x - first;
+            self.sum += apart;
+            self.squares += apart * apart;
             self.high.push(x);
             self.low.push(-x);
         }
@@ -199,8 +228,8 @@ impl Levels {
 
     fn mean_and_rms(&self) -> (f64, f64) {
         let count = self.count.max(1.0);
-        let mean = self.sum / count;
-        (mean, (self.squares / count - mean * mean).max(0.0).sqrt())
+        let apart = self.sum / count;
+        (self.first.unwrap_or(0.0) + apart, (self.squares / count - apart * apart).max(0.0).sqrt())
     }
 
     fn clipped(&self) -> u64 {
@@ -288,6 +317,13 @@ mod tests {
             assert!((share - 2.0 / 3.0).abs() < 0.02, "limit {limit}: {share}");
         }
         assert_eq!(clipped_at(1.0, 0.9), 0);
+    }
+
+    #[test]
+    fn a_constant_leaves_no_rms_at_all() {
+        let mut levels = Levels::default();
+        levels.push(&[0.3; 5000]);
+        assert_eq!(levels.mean_and_rms(), (0.3, 0.0));
     }
 
     #[test]

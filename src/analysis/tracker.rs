@@ -8,8 +8,8 @@
 //! until nothing moves.
 
 use super::kalman::{Advance, Phases, Smoothed};
-use super::phasors::BlockPhasors;
-use super::presence::share_present;
+use super::phasors::{BlockPhasors, block_response};
+use super::presence::{is_there_throughout, share_present};
 use num_complex::Complex64;
 use std::f64::consts::{LN_2, TAU};
 
@@ -95,6 +95,19 @@ impl Cells {
         self.time_s.len()
     }
 
+    /// What a cell reads of a line so far off its reference, against one on it.
+    pub fn response(&self, offset_hz: f64) -> f64 {
+        let hop_s = self.length_s / self.blocks as f64;
+        let half_turn = std::f64::consts::PI * offset_hz * hop_s;
+        let blocks = self.blocks as f64;
+        let mean = if half_turn.abs() < 1e-9 {
+            1.0
+        } else {
+            (blocks * half_turn).sin() / (blocks * half_turn.sin())
+        };
+        block_response(offset_hz, hop_s) * mean
+    }
+
     /// Noise variance of each component of a cell.
     fn variance(&self, line: usize) -> f64 {
         let values = &self.values[line];
@@ -128,6 +141,10 @@ pub(super) struct Line {
     pub steadiness: f64,
     /// Share of the time for which it is there, see [`share_present`].
     pub presence: f64,
+    /// Whether it is there in nearly every cell, see [`is_there_throughout`].
+    pub throughout: bool,
+    /// Mean square.
+    pub power: f64,
 }
 
 /// Tracks the phase; `clear` are the orders to begin with, the clearest first,
@@ -249,7 +266,10 @@ fn standing(cells: &Cells, line: usize, phase: &[f64]) -> Line {
     let lasting = middle.norm_sqr() * groups.len() as f64 / (scatter * std::f64::consts::FRAC_PI_2);
     let mean = groups.iter().sum::<Complex64>() / groups.len() as f64;
     let steadiness = (mean.conj() * middle).re / mean.norm_sqr().max(1e-40);
-    Line { lasting, steadiness: steadiness.clamp(0.0, 2.0), presence: share_present(&turned) }
+    let throughout = is_there_throughout(&turned, mean);
+    let power = 0.5 * (mean.norm_sqr() - scatter / groups.len() as f64).max(0.0);
+    let presence = share_present(&turned);
+    Line { lasting, steadiness: steadiness.clamp(0.0, 2.0), presence, throughout, power }
 }
 
 fn component_median(values: &[Complex64]) -> Complex64 {
