@@ -13,10 +13,10 @@ use super::orders::{NoiseBeside, OrderLevel, OrderMeter, block_hop_s, power_dbfs
 use super::phasors::PhasorBank;
 use super::spectrum::{Spectrum, SpectrumMeter};
 use super::spread::{Wander, spread_about};
-use super::supplies::nearest_supply;
+use super::supplies::{is_usual, nearest_supply};
 use super::survey::{ChannelSurvey, SURVEY_TOP_HZ, Surveyed};
 use super::tracker::{Cells, Tracked, track};
-use super::verdict::Verdict;
+use super::verdict::{Motion, Verdict};
 use super::{AnalyseOptions, AnalysisError, PhaseTrack};
 use crate::capture::Capture;
 use rayon::prelude::*;
@@ -36,6 +36,8 @@ const TRACK_POINTS: usize = 600;
 const SHORTEST_S: f64 = 0.5;
 /// Score of a comb in the survey below which no second look is taken.
 const WORTH_A_LOOK: f64 = 3.0;
+/// Orders up to this one are looked at in short cells also.
+const FINE_ORDERS: u32 = 12;
 /// Share of the time for which another supply's line must be there.
 const OTHER_PRESENT: f64 = 0.9;
 /// RMS about the mean from which a channel is more than a constant.
@@ -226,7 +228,12 @@ fn likeliest(survey: &Surveyed, found: Vec<Candidate>) -> Option<Candidate> {
     let found = |trial: &Trial| trial.verdict.found;
     let first = tried.iter().position(found).unwrap_or(0);
     let public = |trial: &Trial| found(trial) && (40.0..70.0).contains(&trial.frequency_hz);
-    let chosen = match tried.iter().position(public) {
+    // A supply in its usual range before one that strays as far as a note may lie.
+    let usual = |trial: &Trial| public(trial) && is_usual(trial.frequency_hz);
+    let chosen = match tried.iter().position(usual).or_else(|| tried.iter().position(public)) {
+        Some(i) if public(&tried[first]) => i,
+        // One line at 420 Hz may be a public supply's seventh.
+        Some(i) if tried[first].frequency_hz > 70.0 => i,
         Some(i) if tried[first].frequency_hz < 20.0 && own_power(&tried[i]) > own_power(&tried[first]) => i,
         _ => first,
     };
@@ -259,15 +266,15 @@ impl Trial {
         let orders: Vec<u32> = (1..=most).collect();
         let mut gather = Gather::new(rate_hz, &reference, &orders, frames);
         gather.push(&survey.opening);
-        let cells = gather.finish();
+        let Gathered { cells, fine } = gather.finish();
         let tracked = track(&cells, &candidate.orders, reach_hz(survey, &candidate), duration_s)?;
         let frequency_hz = mean_frequency_hz(&reference, &tracked, duration_s);
         let verdict = Verdict::of(
-            &cells,
+            &fine,
             &tracked,
             frequency_hz,
             duration_s,
-            moved_hz(&reference, &tracked, survey.opening_rate_hz),
+            &motion(&reference, &tracked, survey.opening_rate_hz),
         );
         let lines = verdict.lasting.iter().map(|&k| (k, tracked.lines[k as usize - 1].power)).collect();
         Some(Self { candidate, frequency_hz, verdict, lines })
@@ -279,14 +286,23 @@ fn reach_hz(survey: &Surveyed, candidate: &Candidate) -> f64 {
     (0.6 * survey.bin_hz).max(0.3 * candidate.mean_hz() / 50.0)
 }
 
-/// From the lowest to the highest frequency of the fundamental; 0 where that cannot be told.
-fn moved_hz(reference: &PhaseTrack, tracked: &Tracked, rate_hz: f64) -> f64 {
-    let cells = tracked.phases.time_s.iter().zip(&tracked.smoothed.omega);
-    let (low, high) = cells
-        .map(|(&t, omega)| reference_frequency_hz(reference, t) + omega / TAU)
-        .fold((f64::MAX, f64::MIN), |(low, high), f| (low.min(f), high.max(f)));
+/// How the fundamental moves; not at all where that cannot be told.
+fn motion(reference: &PhaseTrack, tracked: &Tracked, rate_hz: f64) -> Motion {
+    let times = &tracked.phases.time_s;
+    let offsets = times.iter().zip(&tracked.smoothed.omega);
+    let frequency_hz: Vec<f64> =
+        offsets.map(|(&t, omega)| reference_frequency_hz(reference, t) + omega / TAU).collect();
+    let low = frequency_hz.iter().copied().fold(f64::MAX, f64::min);
+    let high = frequency_hz.iter().copied().fold(f64::MIN, f64::max);
     // At half the rate a line beats with its own image.
-    if is_half_rate(0.5 * (low + high), rate_hz) { 0.0 } else { high - low }
+    if is_half_rate(0.5 * (low + high), rate_hz) {
+        return Motion::default();
+    }
+    let in_a_second = times.partition_point(|t| t - times[0] < 1.0).max(1);
+    let pairs = frequency_hz.iter().zip(frequency_hz.iter().skip(in_a_second));
+    let squares: Vec<f64> = pairs.map(|(a, b)| (a - b) * (a - b)).collect();
+    let hz_per_s = (squares.iter().sum::<f64>() / squares.len().max(1) as f64).sqrt();
+    Motion { range_hz: high - low, hz_per_s }
 }
 
 /// Pass 1 over one channel or all.
@@ -367,11 +383,11 @@ fn second_pass(
         },
         progress,
     )?;
-    let cells = gather.finish();
+    let Gathered { cells, fine } = gather.finish();
     let tracked = track(&cells, &best.orders, reach_hz(survey, best), duration_s);
     let verdict = tracked.as_ref().map(|tracked| {
         let frequency_hz = mean_frequency_hz(&reference, tracked, duration_s);
-        Verdict::of(&cells, tracked, frequency_hz, duration_s, moved_hz(&reference, tracked, rate_hz))
+        Verdict::of(&fine, tracked, frequency_hz, duration_s, &motion(&reference, tracked, rate_hz))
     });
     Ok(Second { reference, spectrum: spectrum.finish(), tracked, verdict })
 }
@@ -381,6 +397,14 @@ struct Gather {
     bank: PhasorBank,
     noise: NoiseBeside,
     cells: Cells,
+    fine: Cells,
+}
+
+/// What was gathered: cells nearly independent of each other, and short ones of
+/// the low orders, which show the rhythm of notes.
+struct Gathered {
+    cells: Cells,
+    fine: Cells,
 }
 
 impl Gather {
@@ -398,24 +422,28 @@ impl Gather {
         let together = (blocks / 20).clamp(1, 6);
         let noise = NoiseBeside::new(blocks, bank.hop_s(), orders.len());
         let cells = Cells::new(orders, bank.hop_s(), together);
-        Self { bank, noise, cells }
+        let low: Vec<u32> = orders.iter().copied().filter(|&k| k <= FINE_ORDERS).collect();
+        let fine = Cells::new(&low, bank.hop_s(), if bank.hop_s() < 0.1 { together.min(2) } else { 1 });
+        Self { bank, noise, cells, fine }
     }
 
     fn push(&mut self, samples: &[f64]) {
         for block in self.bank.push(samples) {
             self.noise.take(&block.values);
             self.cells.take(&block);
+            self.fine.take(&block);
         }
     }
 
-    fn finish(mut self) -> Cells {
+    fn finish(mut self) -> Gathered {
         for block in self.bank.finish() {
             self.noise.take(&block.values);
             self.cells.take(&block);
+            self.fine.take(&block);
         }
         self.cells.finish();
         self.cells.density = self.noise.densities();
-        self.cells
+        Gathered { cells: self.cells, fine: self.fine }
     }
 }
 
@@ -588,13 +616,14 @@ fn each_line_once(claims: Vec<Claim>) -> Vec<OtherSupply> {
     claims.iter().filter(|claim| !explained(claim)).map(|claim| claim.supply.clone()).collect()
 }
 
-fn other_supply(candidate: &Candidate, cells: Cells, duration_s: f64) -> Option<Claim> {
+fn other_supply(candidate: &Candidate, gathered: Gathered, duration_s: f64) -> Option<Claim> {
+    let Gathered { cells, fine } = gathered;
     let centre_hz = candidate.mean_hz();
     let tracked = track(&cells, &candidate.orders, 0.3 * centre_hz / 50.0, duration_s)?;
     let frequency_hz = centre_hz + tracked.advance.phase_rad / (TAU * duration_s);
     let steady = PhaseTrack::constant(centre_hz, duration_s);
     let verdict =
-        Verdict::of(&cells, &tracked, frequency_hz, duration_s, moved_hz(&steady, &tracked, f64::INFINITY));
+        Verdict::of(&fine, &tracked, frequency_hz, duration_s, &motion(&steady, &tracked, f64::INFINITY));
     let supply = nearest_supply(frequency_hz).filter(|_| verdict.found)?;
     if !is_there_all_the_time(&cells, &tracked, &verdict, frequency_hz) {
         return None;

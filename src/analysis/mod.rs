@@ -8,6 +8,7 @@ mod decimator;
 mod findings;
 mod folding;
 mod kalman;
+mod neighbours;
 mod orders;
 mod phase;
 mod phasors;

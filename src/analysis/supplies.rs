@@ -44,6 +44,12 @@ pub(super) fn nearest_supply(frequency_hz: f64) -> Option<Supply> {
     inside.min_by(|a, b| strays(a).total_cmp(&strays(b)))
 }
 
+/// Whether a frequency is one that an interconnected supply keeps.
+pub(super) fn is_usual(frequency_hz: f64) -> bool {
+    nearest_supply(frequency_hz)
+        .is_some_and(|supply| (frequency_hz / supply.nominal_hz - 1.0).abs() <= supply.usual)
+}
+
 /// How readily a frequency is taken for a supply's before anything is heard: 1
 /// within the usual range, less towards the edge of the island's.
 pub(super) fn prior(frequency_hz: f64) -> f64 {

@@ -91,7 +91,7 @@ impl Cells {
         (self.gathered, self.sum_time) = (0, 0.0);
     }
 
-    fn count(&self) -> usize {
+    pub fn count(&self) -> usize {
         self.time_s.len()
     }
 
@@ -214,7 +214,12 @@ fn mean_of(values: impl Iterator<Item = Complex64>, cells: &Cells) -> Complex64 
     values.zip(&cells.share).map(|(z, share)| z * share).sum::<Complex64>() / total
 }
 
-fn turned<'a>(cells: &'a Cells, line: usize, phase: &'a [f64]) -> impl Iterator<Item = Complex64> + 'a {
+/// A line's phasors against a phase of the fundamental, given cell by cell.
+pub(super) fn turned<'a>(
+    cells: &'a Cells,
+    line: usize,
+    phase: &'a [f64],
+) -> impl Iterator<Item = Complex64> + 'a {
     let k = f64::from(cells.orders[line]);
     cells.values[line].iter().zip(phase).map(move |(z, p)| z * Complex64::cis(-k * p))
 }
@@ -476,7 +481,7 @@ impl<'a> Search<'a> {
 }
 
 /// Straight lines between knots, level outside; 0 where there are none.
-fn between(knots: &[(f64, f64)], t: f64) -> f64 {
+pub(super) fn between(knots: &[(f64, f64)], t: f64) -> f64 {
     let right = knots.partition_point(|knot| knot.0 <= t);
     match (right.checked_sub(1).map(|left| knots[left]), knots.get(right)) {
         (Some((t0, y0)), Some(&(t1, y1))) => y0 + (y1 - y0) * (t - t0) / (t1 - t0),
