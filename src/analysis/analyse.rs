@@ -5,18 +5,19 @@
 //! Pass 3 measures the levels along that track, and other supplies.
 
 use super::causes::likely_causes;
-use super::coherent::{Faint, faint_combs};
 use super::comb::{Candidate, candidates, candidates_besides};
 use super::findings::{Analysis, CaptureSummary, Harmonic, Mains, OtherSupply, TrackPoint};
 use super::folding::{folded_harmonics, is_half_rate};
-use super::orders::{NoiseBeside, OrderLevel, OrderMeter, block_hop_s, power_dbfs};
-use super::phasors::PhasorBank;
+use super::gather::{Gather, Gathered};
+use super::likeliest::{likeliest, reach_hz};
+use super::orders::{OrderLevel, OrderMeter, power_dbfs};
+use super::reference::{mean_frequency_hz, motion, reference_frequency_hz, reference_track};
 use super::spectrum::{Spectrum, SpectrumMeter};
 use super::spread::{Wander, spread_about};
-use super::supplies::{is_usual, nearest_supply};
-use super::survey::{ChannelSurvey, SURVEY_TOP_HZ, Surveyed};
+use super::supplies::nearest_supply;
+use super::survey::{ChannelSurvey, Surveyed};
 use super::tracker::{Cells, Tracked, track};
-use super::verdict::{Motion, Verdict};
+use super::verdict::Verdict;
 use super::{AnalyseOptions, AnalysisError, PhaseTrack};
 use crate::capture::Capture;
 use rayon::prelude::*;
@@ -27,21 +28,17 @@ const BLOCK_FRAMES: usize = 1 << 16;
 /// Harmonics are measured up to this frequency.
 const TOP_HZ: f64 = 5000.0;
 /// and up to this share of the sample rate.
-const TOP_SHARE: f64 = 0.45;
+pub(super) const TOP_SHARE: f64 = 0.45;
 /// A harmonic is listed from this height over the noise in 1/T.
 const LISTED_DB: f64 = 10.5;
 /// Most points in the track.
 const TRACK_POINTS: usize = 600;
 /// Shortest capture in which anything can be told, in seconds.
 const SHORTEST_S: f64 = 0.5;
-/// Score of a comb in the survey below which no second look is taken.
-const WORTH_A_LOOK: f64 = 3.0;
-/// Orders up to this one are looked at in short cells also.
-const FINE_ORDERS: u32 = 12;
 /// Share of the time for which another supply's line must be there.
 const OTHER_PRESENT: f64 = 0.9;
-/// RMS about the mean from which a channel is more than a constant.
-const SILENT: f64 = 1e-9;
+/// RMS about the mean from which a channel is more than a pub(super) constant.
+pub(super) const SILENT: f64 = 1e-9;
 /// RMS wander, as a share of its frequency, up to which another supply's line is narrow.
 const OTHER_WANDER: f64 = 0.002;
 
@@ -203,108 +200,6 @@ fn best_of(found: &[Candidate]) -> Option<&Candidate> {
     found.iter().max_by(|a, b| a.score.total_cmp(&b.score))
 }
 
-/// The candidate whose lines, followed through the opening, say most.
-fn likeliest(survey: &Surveyed, found: Vec<Candidate>) -> Option<Candidate> {
-    if survey.rms <= SILENT {
-        return None;
-    }
-    let worth = found.into_iter().filter(|candidate| candidate.score >= WORTH_A_LOOK);
-    let segments = survey.ratios.len();
-    let faint = faint_combs(survey).into_iter().flat_map(Faint::and_its_third).map(|faint| Candidate {
-        path_hz: vec![faint.frequency_hz; segments],
-        score: 0.0,
-        power: 0.0,
-        orders: faint.orders,
-    });
-    let all: Vec<Candidate> = worth.chain(if segments > 0 { faint.collect() } else { Vec::new() }).collect();
-    let mut tried: Vec<Trial> =
-        all.into_par_iter().filter_map(|candidate| Trial::of(survey, candidate)).collect();
-    tried.sort_by(|a, b| b.verdict.evidence.total_cmp(&a.verdict.evidence));
-    let own_power = |trial: &Trial| -> f64 {
-        // Every third line of a railway's comb may be a public supply's.
-        let railway = trial.frequency_hz < 20.0;
-        trial.lines.iter().filter(|(k, _)| !railway || !k.is_multiple_of(3)).map(|(_, p)| p).sum()
-    };
-    let found = |trial: &Trial| trial.verdict.found;
-    let first = tried.iter().position(found).unwrap_or(0);
-    let public = |trial: &Trial| found(trial) && (40.0..70.0).contains(&trial.frequency_hz);
-    // A supply in its usual range before one that strays as far as a note may lie.
-    let usual = |trial: &Trial| public(trial) && is_usual(trial.frequency_hz);
-    let chosen = match tried.iter().position(usual).or_else(|| tried.iter().position(public)) {
-        Some(i) if public(&tried[first]) => i,
-        // One line at 420 Hz may be a public supply's seventh.
-        Some(i) if tried[first].frequency_hz > 70.0 => i,
-        Some(i) if tried[first].frequency_hz < 20.0 && own_power(&tried[i]) > own_power(&tried[first]) => i,
-        _ => first,
-    };
-    // Of two accounts of one comb, the survey's own: the other was picked for its evidence.
-    let surveyed = |trial: &Trial| {
-        let apart = trial.frequency_hz / tried[chosen].frequency_hz - 1.0;
-        found(trial) && trial.candidate.score > 0.0 && apart.abs() < 0.005
-    };
-    let chosen = tried.iter().position(surveyed).unwrap_or(chosen);
-    (chosen < tried.len()).then(|| tried.swap_remove(chosen).candidate)
-}
-
-/// A candidate followed through the opening of the capture.
-struct Trial {
-    candidate: Candidate,
-    frequency_hz: f64,
-    verdict: Verdict,
-    /// Lasting orders and their mean squares.
-    lines: Vec<(u32, f64)>,
-}
-
-impl Trial {
-    fn of(survey: &Surveyed, candidate: Candidate) -> Option<Self> {
-        let rate_hz = survey.opening_rate_hz;
-        let frames = survey.opening.len() as u64;
-        let duration_s = frames as f64 / rate_hz;
-        let reference = reference_track(&candidate, &survey.times_s, duration_s);
-        let top_hz = SURVEY_TOP_HZ.min(TOP_SHARE * rate_hz);
-        let most = ((top_hz / candidate.mean_hz()) as u32).clamp(1, 24);
-        let orders: Vec<u32> = (1..=most).collect();
-        let mut gather = Gather::new(rate_hz, &reference, &orders, frames);
-        gather.push(&survey.opening);
-        let Gathered { cells, fine } = gather.finish();
-        let tracked = track(&cells, &candidate.orders, reach_hz(survey, &candidate), duration_s)?;
-        let frequency_hz = mean_frequency_hz(&reference, &tracked, duration_s);
-        let verdict = Verdict::of(
-            &fine,
-            &tracked,
-            frequency_hz,
-            duration_s,
-            &motion(&reference, &tracked, survey.opening_rate_hz),
-        );
-        let lines = verdict.lasting.iter().map(|&k| (k, tracked.lines[k as usize - 1].power)).collect();
-        Some(Self { candidate, frequency_hz, verdict, lines })
-    }
-}
-
-/// How far off the fundamental may be from a candidate's.
-fn reach_hz(survey: &Surveyed, candidate: &Candidate) -> f64 {
-    (0.6 * survey.bin_hz).max(0.3 * candidate.mean_hz() / 50.0)
-}
-
-/// How the fundamental moves; not at all where that cannot be told.
-fn motion(reference: &PhaseTrack, tracked: &Tracked, rate_hz: f64) -> Motion {
-    let times = &tracked.phases.time_s;
-    let offsets = times.iter().zip(&tracked.smoothed.omega);
-    let frequency_hz: Vec<f64> =
-        offsets.map(|(&t, omega)| reference_frequency_hz(reference, t) + omega / TAU).collect();
-    let low = frequency_hz.iter().copied().fold(f64::MAX, f64::min);
-    let high = frequency_hz.iter().copied().fold(f64::MIN, f64::max);
-    // At half the rate a line beats with its own image.
-    if is_half_rate(0.5 * (low + high), rate_hz) {
-        return Motion::default();
-    }
-    let in_a_second = times.partition_point(|t| t - times[0] < 1.0).max(1);
-    let pairs = frequency_hz.iter().zip(frequency_hz.iter().skip(in_a_second));
-    let squares: Vec<f64> = pairs.map(|(a, b)| (a - b) * (a - b)).collect();
-    let hz_per_s = (squares.iter().sum::<f64>() / squares.len().max(1) as f64).sqrt();
-    Motion { range_hz: high - low, hz_per_s }
-}
-
 /// Pass 1 over one channel or all.
 fn survey(
     capture: &mut dyn Capture,
@@ -392,101 +287,10 @@ fn second_pass(
     Ok(Second { reference, spectrum: spectrum.finish(), tracked, verdict })
 }
 
-/// Phasors and the noise beside them, gathered into cells.
-struct Gather {
-    bank: PhasorBank,
-    noise: NoiseBeside,
-    cells: Cells,
-    fine: Cells,
-}
-
-/// What was gathered: cells nearly independent of each other, and short ones of
-/// the low orders, which show the rhythm of notes.
-struct Gathered {
-    cells: Cells,
-    fine: Cells,
-}
-
-impl Gather {
-    fn new(rate_hz: f64, reference: &PhaseTrack, orders: &[u32], frames: u64) -> Self {
-        let duration_s = frames as f64 / rate_hz;
-        let bank = PhasorBank::new(
-            rate_hz,
-            reference,
-            orders,
-            block_hop_s(reference.mean_frequency_hz(), duration_s),
-        );
-        let blocks = bank.blocks_in(frames);
-        // Six blocks are nearly independent of the next six; a short capture
-        // needs some twenty cells the more.
-        let together = (blocks / 20).clamp(1, 6);
-        let noise = NoiseBeside::new(blocks, bank.hop_s(), orders.len());
-        let cells = Cells::new(orders, bank.hop_s(), together);
-        let low: Vec<u32> = orders.iter().copied().filter(|&k| k <= FINE_ORDERS).collect();
-        let fine = Cells::new(&low, bank.hop_s(), if bank.hop_s() < 0.1 { together.min(2) } else { 1 });
-        Self { bank, noise, cells, fine }
-    }
-
-    fn push(&mut self, samples: &[f64]) {
-        for block in self.bank.push(samples) {
-            self.noise.take(&block.values);
-            self.cells.take(&block);
-            self.fine.take(&block);
-        }
-    }
-
-    fn finish(mut self) -> Gathered {
-        for block in self.bank.finish() {
-            self.noise.take(&block.values);
-            self.cells.take(&block);
-            self.fine.take(&block);
-        }
-        self.cells.finish();
-        self.cells.density = self.noise.densities();
-        Gathered { cells: self.cells, fine: self.fine }
-    }
-}
-
 fn orders_below_top(fundamental_hz: f64, rate_hz: f64) -> Vec<u32> {
     let top_hz = TOP_HZ.min(TOP_SHARE * rate_hz);
     // The fundamental itself is looked at up to half the rate.
     (1..=((top_hz / fundamental_hz) as u32).max(1)).collect()
-}
-
-/// The phase along the candidate's path: its frequencies joined by straight lines.
-fn reference_track(candidate: &Candidate, times_s: &[f64], duration_s: f64) -> PhaseTrack {
-    let path = &candidate.path_hz;
-    if path.iter().all(|f| *f == path[0]) {
-        return PhaseTrack::constant(path[0], duration_s);
-    }
-    let smooth = |i: usize| {
-        let around = &path[i.saturating_sub(1)..(i + 2).min(path.len())];
-        around.iter().sum::<f64>() / around.len() as f64
-    };
-    let mut time_s = vec![0.0];
-    let mut frequency_hz = vec![smooth(0)];
-    for (i, &t) in times_s.iter().enumerate().filter(|(_, t)| **t > 0.0 && **t < duration_s) {
-        time_s.push(t);
-        frequency_hz.push(smooth(i));
-    }
-    time_s.push(duration_s);
-    frequency_hz.push(smooth(path.len() - 1));
-    let mut phase_rad = vec![0.0];
-    for i in 1..time_s.len() {
-        let step = 0.5 * (frequency_hz[i] + frequency_hz[i - 1]) * (time_s[i] - time_s[i - 1]);
-        phase_rad.push(phase_rad[i - 1] + TAU * step);
-    }
-    PhaseTrack { time_s, phase_rad, frequency_hz }
-}
-
-fn mean_frequency_hz(reference: &PhaseTrack, tracked: &Tracked, duration_s: f64) -> f64 {
-    let carried = reference.phase_at(duration_s) - reference.phase_at(0.0);
-    (carried + tracked.advance.phase_rad) / (TAU * duration_s)
-}
-
-fn reference_frequency_hz(reference: &PhaseTrack, time_s: f64) -> f64 {
-    let h = 0.05;
-    (reference.phase_at(time_s + h) - reference.phase_at(time_s - h)) / (2.0 * h * TAU)
 }
 
 /// Reference and offset as one track with knots at the cells and both ends.
