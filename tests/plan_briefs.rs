@@ -185,6 +185,17 @@ fn drawn_brief(seed: u64) -> (Analysis, LineBrief) {
     (findings(nominal_hz, &levels), brief)
 }
 
+/// Largest loss or gain in the judged parts of a band, looked for at a thousand points of each.
+fn largest_loss_db(design: &Design, band: &KeepBand, lines_hz: &[f64], guard_hz: f64) -> f64 {
+    let judged = band.judged(lines_hz, guard_hz).into_iter();
+    let points = judged.flat_map(|(from_hz, to_hz)| {
+        let lowest_hz = from_hz.max(1e-4 * to_hz);
+        (0..1000).map(move |n| lowest_hz * (to_hz / lowest_hz).powf(f64::from(n) / 999.0))
+    });
+    let loss_db = |hz: f64| -20.0 * design.circuit.insertion(hz).norm().log10();
+    points.map(|hz| loss_db(hz).abs()).fold(0.0, f64::max)
+}
+
 #[test]
 fn whatever_the_brief_the_answer_is_a_plan_from_listed_parts_or_a_reason() {
     for stock in [bench_stock(), Stock::built_in()] {
@@ -206,6 +217,13 @@ fn whatever_the_brief_the_answer_is_a_plan_from_listed_parts_or_a_reason() {
             }
             for part in &plan.design.circuit.parts {
                 assert!(is_listed(part, &stock), "brief {seed}: {} {}", part.reference, part.value);
+            }
+            let lines_hz: Vec<f64> =
+                plan.design.predicted.iter().map(|order| f64::from(order.order) * plan.centre_hz).collect();
+            for (told, band) in plan.design.keep.iter().zip(&brief.keep) {
+                let true_db = largest_loss_db(&plan.design, band, &lines_hz, brief.guard_hz);
+                let near = (told.loss_db.abs() - true_db).abs() <= 0.02 * true_db + 0.005;
+                assert!(near, "brief {seed}: {true_db} dB in the band, {} dB told", told.loss_db);
             }
         }
     }

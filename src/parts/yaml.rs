@@ -88,10 +88,29 @@ pub fn read_with_examples<T: DeserializeOwned>(
 /// # Errors
 /// [`YamlError`] when the value has no form in YAML.
 pub fn write<T: Serialize>(file: &Path, value: &T) -> Result<String, YamlError> {
-    serde_yaml::to_string(value).map_err(|error| {
+    let text = serde_yaml::to_string(value).map_err(|error| {
         let problem = format!("cannot be written as YAML: {error}");
         YamlError { file: file.to_owned(), line: None, key: String::new(), problem }
-    })
+    })?;
+    Ok(text.lines().map(with_point).collect())
+}
+
+/// A line with its line break, and a number `1e-9` as `1.0e-9`, `2.5e16` as `2.5e+16`:
+/// readers of YAML 1.1 take it for text without point and sign.
+fn with_point(line: &str) -> String {
+    let number = line.rsplit(' ').next().unwrap_or("");
+    let before = &line[..line.len() - number.len()];
+    let plain = |text: &str| !text.is_empty() && text.bytes().all(|byte| b"-.0123456789".contains(&byte));
+    match number.split_once('e') {
+        Some((mantissa, exponent))
+            if (before.ends_with(": ") || before.ends_with("- ")) && plain(mantissa) && plain(exponent) =>
+        {
+            let point = if mantissa.contains('.') { "" } else { ".0" };
+            let sign = if exponent.starts_with('-') { "" } else { "+" };
+            format!("{before}{mantissa}{point}e{sign}{exponent}\n")
+        }
+        _ => format!("{line}\n"),
+    }
 }
 
 /// Reads a value that is written as text by `read`, whose refusals are placed
@@ -355,6 +374,14 @@ mod tests {
     use super::*;
     use crate::parts::quantity::Hertz;
     use serde::Deserialize;
+
+    #[test]
+    fn numbers_are_numbers_for_readers_of_the_older_yaml_too() {
+        let text = write(Path::new("x"), &(1e-9, 2.5e16, -3e-7, 0.25, "to 1e5", "1e5")).unwrap();
+        assert_eq!(text, "- 1.0e-9\n- 2.5e+16\n- -3.0e-7\n- 0.25\n- to 1e5\n- '1e5'\n");
+        let read: (f64, f64, f64, f64, String, String) = serde_yaml::from_str(&text).unwrap();
+        assert_eq!(read, (1e-9, 2.5e16, -3e-7, 0.25, "to 1e5".into(), "1e5".into()));
+    }
 
     #[derive(Debug, Deserialize)]
     #[serde(deny_unknown_fields)]

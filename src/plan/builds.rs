@@ -14,7 +14,7 @@ use rayon::prelude::*;
 use super::chance::Chance;
 use super::design::{BandPoint, Trim};
 use super::optimise::loss_db;
-use super::requirements::{FINE, Rule, Sample, Task, samples};
+use super::requirements::{FINE, Rule, Sample, Task, samples, with_extremes};
 use crate::network::{Circuit, PartValue};
 use crate::parts::REFERENCE_TEMPERATURE_C;
 
@@ -55,6 +55,7 @@ pub fn judge(
             let values = build(circuit, trims, temperature_c, seed, index);
             let mut losses = vec![0.0; frequencies.len()];
             losses_db(circuit, &values, &frequencies, &mut losses);
+            with_extremes(&rules, &mut losses);
             Build::judged(&rules, &losses, task)
         })
         .collect();

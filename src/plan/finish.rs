@@ -4,7 +4,7 @@ use super::assembly::expanded;
 use super::builds::{self, losses_db};
 use super::design::{Builds, Design, KeepResult, Notched, Predicted, SectionSummary, Trim};
 use super::optimise::{Point, Problem};
-use super::requirements::{FINE, Rule, Task, samples};
+use super::requirements::{FINE, Rule, Task, samples, with_extremes};
 use super::shelf::Listed;
 use super::trim::Adjustable;
 use crate::network::kinds::{Notch, Slot, SlotValue, kind_named};
@@ -331,6 +331,7 @@ pub fn design(
     let frequencies: Vec<f64> = rules.iter().map(|sample| sample.frequency_hz).collect();
     let mut losses = vec![0.0; frequencies.len()];
     losses_db(&circuit, &circuit.values(), &frequencies, &mut losses);
+    with_extremes(&rules, &mut losses);
     let kept = |wanted: usize| {
         rules.iter().zip(&losses).filter_map(move |(sample, &loss)| match sample.rule {
             Rule::Keep { band, .. } if band == wanted => Some(loss),

@@ -178,6 +178,8 @@ pub struct Sample {
     pub rule: Rule,
     /// Decibels that count as one unit of miss.
     pub scale_db: f64,
+    /// Samples of one number lie evenly side by side in one stretch.
+    pub stretch: usize,
 }
 
 impl Sample {
@@ -270,28 +272,53 @@ impl Lean {
 /// All rules of a task at their frequencies.
 pub fn samples(task: &Task, density: Density) -> Vec<Sample> {
     let mut samples = Vec::new();
+    let mut stretch = 0;
     for (index, order) in task.orders.iter().enumerate() {
+        stretch += 1;
         for point in 0..density.per_line {
             let across = 2.0 * point as f64 / (density.per_line - 1) as f64 - 1.0;
             samples.push(Sample {
                 frequency_hz: order.centre_hz + across * order.spread_hz,
                 rule: Rule::Reduce { order: index, target_db: order.target_db },
                 scale_db: reduce_scale_db(order.target_db),
+                stretch,
             });
         }
     }
     for (index, band) in task.keep.iter().enumerate() {
         for (from_hz, to_hz) in task.judged(band) {
+            stretch += 1;
             for frequency_hz in interval_points(from_hz, to_hz, density) {
                 samples.push(Sample {
                     frequency_hz,
                     rule: Rule::Keep { band: index, allowed_db: band.allowed_db },
                     scale_db: keep_scale_db(band.allowed_db),
+                    stretch,
                 });
             }
         }
     }
     samples
+}
+
+/// Losses at the samples, each that is an extreme among its neighbours replaced by the
+/// extreme of the parabola through the three: what peaks between samples is seen.
+pub fn with_extremes(samples: &[Sample], losses_db: &mut [f64]) {
+    let read = losses_db.to_vec();
+    for middle in 1..samples.len().max(1) - 1 {
+        let [left, right] = [middle - 1, middle + 1];
+        if samples[left].stretch == samples[right].stretch {
+            losses_db[middle] = extreme(read[left], read[middle], read[right]);
+        }
+    }
+}
+
+/// The extreme of the parabola through three values, where the middle one is the largest
+/// or the smallest; else the middle one.
+fn extreme(left: f64, middle: f64, right: f64) -> f64 {
+    let (slope, bend) = (0.5 * (right - left), left - 2.0 * middle + right);
+    let is_extreme = (middle - left) * (middle - right) > 0.0;
+    if is_extreme { middle - slope * slope / (2.0 * bend) } else { middle }
 }
 
 /// Points from edge to edge: evenly by ratio; evenly by frequency, 0 Hz itself
@@ -311,4 +338,31 @@ fn interval_points(from_hz: f64, to_hz: f64, density: Density) -> Vec<f64> {
             }
         })
         .collect()
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+
+    #[test]
+    fn a_peak_between_samples_is_seen() {
+        let rule = Rule::Keep { band: 0, allowed_db: 1.0 };
+        let at = |stretch| Sample { frequency_hz: 1.0, rule, scale_db: 1.0, stretch };
+        let ripple = |n: u32| (0.7 * f64::from(n) - 0.2).cos();
+        let samples: Vec<Sample> = (0..9).map(|_| at(1)).collect();
+        let mut losses: Vec<f64> = (0..9).map(ripple).collect();
+        with_extremes(&samples, &mut losses);
+        let most = losses.iter().copied().fold(f64::MIN, f64::max);
+        let least = losses.iter().copied().fold(f64::MAX, f64::min);
+        assert!((most - 1.0).abs() < 0.02 && (least + 1.0).abs() < 0.02, "{least} to {most}");
+    }
+
+    #[test]
+    fn what_lies_on_either_side_of_a_guard_is_not_joined() {
+        let rule = Rule::Keep { band: 0, allowed_db: 1.0 };
+        let samples = [1, 1, 2, 2].map(|stretch| Sample { frequency_hz: 1.0, rule, scale_db: 1.0, stretch });
+        let mut losses = [0.0, 3.0, 2.9, 0.0];
+        with_extremes(&samples, &mut losses);
+        assert_eq!(losses, [0.0, 3.0, 2.9, 0.0]);
+    }
 }
