@@ -3,7 +3,7 @@
 mod report_fixture;
 
 use notchwright::report::{CAUTIONS, charts, page, parts_csv};
-use report_fixture::{Findings, hostile, nothing_found, tide_gauge};
+use report_fixture::{Findings, hostile, nothing_found, quiet_enough, tide_gauge};
 
 /// Letters are about this wide for their height in common sans-serif faces.
 const LETTER_WIDTH: f64 = 0.56;
@@ -126,7 +126,7 @@ fn every_figure_that_decides_stands_on_the_page() {
 
 #[test]
 fn all_cautions_stand_on_the_page() {
-    for findings in [tide_gauge(), nothing_found()] {
+    for findings in [tide_gauge(), nothing_found(), quiet_enough()] {
         let text = page(&findings.material()).unwrap();
         for caution in CAUTIONS {
             assert!(text.contains(caution.text), "{} is missing", caution.topic);
@@ -169,6 +169,18 @@ fn no_deviation_is_told_finer_than_a_clock_can_hold() {
     assert!(found.contains("(within\u{a0}0.00001\u{a0}Hz, one standard error)"), "{found}");
     assert!(found.contains("noise alone would show less than 0.00001 Hz"));
     assert!(!found.contains("nHz") && !found.contains("µHz"));
+}
+
+#[test]
+fn a_line_quiet_enough_is_told_to_buy_nothing_and_gets_no_bench_sheet() {
+    let html = page(&quiet_enough().material()).unwrap();
+    assert!(html.contains("no filter is proposed: buy nothing"));
+    assert!(html.contains("The brief is met without a filter."));
+    for part in ["bench", "alternatives", "listen"] {
+        assert!(!html.contains(&format!("<section id=\"{part}\"")), "{part}");
+        assert!(!html.contains(&format!("href=\"#{part}\"")), "{part}");
+    }
+    assert!(html.contains("<section id=\"cautions\""));
 }
 
 #[test]
@@ -244,9 +256,12 @@ fn what_users_wrote_is_shown_and_never_run() {
 
 #[test]
 fn no_figure_reads_as_computer_speech() {
-    for (name, findings) in
-        [("hostile", hostile()), ("tide-gauge", tide_gauge()), ("nothing", nothing_found())]
-    {
+    for (name, findings) in [
+        ("hostile", hostile()),
+        ("tide-gauge", tide_gauge()),
+        ("nothing", nothing_found()),
+        ("quiet", quiet_enough()),
+    ] {
         let html = page(&findings.material()).unwrap();
         let text = visible(&html);
         for word in text.split(|c: char| !c.is_ascii_alphanumeric()) {
@@ -290,6 +305,7 @@ fn every_chart_is_sound_xml_with_its_texts_inside_the_picture() {
     let cases = [
         ("tide-gauge", tide_gauge()),
         ("nothing", nothing_found()),
+        ("quiet", quiet_enough()),
         ("hostile", hostile()),
         ("crowded", crowded),
         ("one-point", one_point),
@@ -319,7 +335,7 @@ fn charts_inside_the_page_are_named_for_those_who_cannot_see_them() {
 
 #[test]
 fn every_link_on_the_page_leads_somewhere_on_it() {
-    for findings in [tide_gauge(), nothing_found()] {
+    for findings in [tide_gauge(), nothing_found(), quiet_enough()] {
         let html = page(&findings.material()).unwrap();
         for link in html.split("href=\"#").skip(1) {
             let target = link.split('"').next().unwrap();

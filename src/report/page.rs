@@ -72,7 +72,10 @@ fn view(material: &Material) -> Value {
         simulation_notes => material.simulation.notes.clone(),
         alternatives => serialised(alternatives(material)),
         plan_notes => plan.notes.clone(),
-        listening => serialised(material.excerpt.map(|excerpt| listening(excerpt, hum_hz(material)))),
+        // Where there is no filter, there is nothing to compare.
+        listening => serialised(
+            material.excerpt.filter(|_| verdict::has_filter(material)).map(|excerpt| listening(excerpt, hum_hz(material))),
+        ),
         purchases => serialised(bench::purchases(&design.circuit.parts)),
         setup => bench::setup(material),
         steps => serialised(bench::steps(material)),

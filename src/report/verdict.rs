@@ -78,7 +78,7 @@ pub(super) fn lines(material: &Material) -> Vec<Line> {
         });
     }
     let meeting = design.builds.meeting_pct;
-    lines.push(Line {
+    let builds = has_filter(material).then(|| Line {
         asked: format!("all of it in at least {} % of builds", short(BUILDS_WANTED_PCT)),
         predicted: Some(Judged {
             figure: format!("{} % of {}", number(meeting, 1), design.builds.count),
@@ -86,7 +86,13 @@ pub(super) fn lines(material: &Material) -> Vec<Line> {
         }),
         measured: None,
     });
+    lines.extend(builds);
     lines
+}
+
+/// Whether the plan is a filter at all, and not the line as it is.
+pub(super) fn has_filter(material: &Material) -> bool {
+    !material.plan.design.circuit.parts.is_empty()
 }
 
 fn measured_reduction(residual: &Residual, target_db: f64) -> Judged {
@@ -107,7 +113,12 @@ fn loss(loss_db: f64, allowed_db: f64) -> Judged {
 
 /// `0.42 dB lost`, `0.10 dB gained`.
 pub(super) fn loss_words(loss_db: f64) -> String {
-    if loss_db < 0.0 { format!("{} gained", decibel(-loss_db)) } else { format!("{} lost", decibel(loss_db)) }
+    // What rounds to nothing is no gain.
+    if loss_db < -0.005 {
+        format!("{} gained", decibel(-loss_db))
+    } else {
+        format!("{} lost", decibel(loss_db.abs()))
+    }
 }
 
 /// RMS of several levels together, dBFS: powers add.
@@ -154,6 +165,14 @@ pub(super) fn answer(material: &Material) -> String {
     } else {
         counted(orders.len(), "harmonic", "harmonics")
     };
+    if !has_filter(material) {
+        return format!(
+            "The line hums at {} ({which}) with {}; no harmonic of it needs reducing for this brief, so no filter is \
+             proposed: buy nothing.",
+            hertz(frequency),
+            level_and_volts(before, full_scale_v),
+        );
+    }
     format!(
         "The line hums at {} ({which}) with {}; the filter proposed leaves {at_most}{} of it, and costs {}.",
         hertz(frequency),
@@ -186,6 +205,9 @@ fn cost(material: &Material) -> String {
 /// The verdict in a word or two.
 pub(super) fn headline(material: &Material) -> (Standing, String) {
     let (planned, measured) = (material.plan.design.met, material.simulation.met);
+    if planned && measured && !has_filter(material) {
+        return (Standing::Met, "The brief is met without a filter.".to_owned());
+    }
     match (planned, measured) {
         (true, true) => (Standing::Met, "The brief is met: by the plan, and on this recording.".to_owned()),
         (true, false) => (
