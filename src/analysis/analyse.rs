@@ -7,7 +7,7 @@
 use super::causes::likely_causes;
 use super::comb::{Candidate, candidates, candidates_besides};
 use super::findings::{Analysis, CaptureSummary, Harmonic, Mains, OtherSupply, TrackPoint};
-use super::folding::{folded_harmonics, is_half_rate};
+use super::folding::{folded_harmonics, hidden_supplies, is_half_rate};
 use super::gather::{Gather, Gathered};
 use super::likeliest::{likeliest, reach_hz};
 use super::orders::{OrderLevel, OrderMeter, power_dbfs};
@@ -17,7 +17,7 @@ use super::spread::{Wander, spread_about};
 use super::supplies::nearest_supply;
 use super::survey::{ChannelSurvey, Surveyed};
 use super::tracker::{Cells, Tracked, track};
-use super::verdict::Verdict;
+use super::verdict::{Company, Verdict};
 use super::{AnalyseOptions, AnalysisError, PhaseTrack};
 use crate::capture::Capture;
 use rayon::prelude::*;
@@ -149,7 +149,13 @@ fn analyse_one(
         spectrum: Spectrum::default(),
         confidence: 0.0,
         hum: None,
-        notes: capture_notes(&survey, duration_s, options.channel.is_none() && format.channels > 1, channel),
+        notes: capture_notes(
+            &survey,
+            rate_hz,
+            duration_s,
+            options.channel.is_none() && format.channels > 1,
+            channel,
+        ),
     };
     let best = if duration_s >= SHORTEST_S { likeliest(&survey, found) } else { None };
     let Some(best) = &best else {
@@ -282,13 +288,25 @@ fn second_pass(
     let tracked = track(&cells, &best.orders, reach_hz(survey, best), duration_s);
     let verdict = tracked.as_ref().map(|tracked| {
         let frequency_hz = mean_frequency_hz(&reference, tracked, duration_s);
-        Verdict::of(&fine, tracked, frequency_hz, duration_s, &motion(&reference, tracked, rate_hz))
+        Verdict::of(
+            &fine,
+            tracked,
+            frequency_hz,
+            duration_s,
+            &motion(&reference, tracked, rate_hz),
+            Company::Alone,
+        )
     });
     Ok(Second { reference, spectrum: spectrum.finish(), tracked, verdict })
 }
 
+/// Up to where harmonics are looked for at a sample rate.
+pub(super) fn top_hz(rate_hz: f64) -> f64 {
+    TOP_HZ.min(TOP_SHARE * rate_hz)
+}
+
 fn orders_below_top(fundamental_hz: f64, rate_hz: f64) -> Vec<u32> {
-    let top_hz = TOP_HZ.min(TOP_SHARE * rate_hz);
+    let top_hz = top_hz(rate_hz);
     // The fundamental itself is looked at up to half the rate.
     (1..=((top_hz / fundamental_hz) as u32).max(1)).collect()
 }
@@ -426,8 +444,14 @@ fn other_supply(candidate: &Candidate, gathered: Gathered, duration_s: f64) -> O
     let tracked = track(&cells, &candidate.orders, 0.3 * centre_hz / 50.0, duration_s)?;
     let frequency_hz = centre_hz + tracked.advance.phase_rad / (TAU * duration_s);
     let steady = PhaseTrack::constant(centre_hz, duration_s);
-    let verdict =
-        Verdict::of(&fine, &tracked, frequency_hz, duration_s, &motion(&steady, &tracked, f64::INFINITY));
+    let verdict = Verdict::of(
+        &fine,
+        &tracked,
+        frequency_hz,
+        duration_s,
+        &motion(&steady, &tracked, f64::INFINITY),
+        Company::BesideAnother,
+    );
     let supply = nearest_supply(frequency_hz).filter(|_| verdict.found)?;
     if !is_there_all_the_time(&cells, &tracked, &verdict, frequency_hz) {
         return None;
@@ -457,8 +481,14 @@ fn is_there_all_the_time(cells: &Cells, tracked: &Tracked, verdict: &Verdict, fr
     present && wander_hz <= OTHER_WANDER * frequency_hz
 }
 
-fn capture_notes(survey: &Surveyed, duration_s: f64, chosen: bool, channel: usize) -> Vec<String> {
-    let mut notes = Vec::new();
+fn capture_notes(
+    survey: &Surveyed,
+    rate_hz: f64,
+    duration_s: f64,
+    chosen: bool,
+    channel: usize,
+) -> Vec<String> {
+    let mut notes = hidden_supplies(rate_hz);
     if chosen {
         notes.push(format!("channel {} has the strongest hum and was analysed", channel + 1));
     }
@@ -511,7 +541,7 @@ fn merged(mut done: Vec<One>) -> AnalysisRun {
     let hum = done[base].hum.take().expect("the base has hum");
     AnalysisRun {
         analysis: Analysis {
-            causes: likely_causes(&harmonics, clipped),
+            causes: likely_causes(&harmonics, clipped, rate_hz),
             folding: folded_harmonics(hum.frequency_hz, rate_hz),
             captures,
             mains,
@@ -560,11 +590,14 @@ fn merged_mains(done: &[One], base: usize, notes: &mut Vec<String>) -> Mains {
     let spread = spread_about(mean_hz, &wanders);
     match spread {
         Some(spread) if spread.spread_hz < spread.floor_hz => notes.push(format!(
-            "the wander is below what noise alone shows in this capture (± {:.4} Hz)",
-            spread.floor_hz
+            "the wander is below what noise alone shows in this capture ({})",
+            half_width_told(spread.floor_hz)
         )),
         None => notes.push("the capture is too short to show any wander".to_owned()),
         _ => {}
+    }
+    if let Some(stray) = stray_note(mean_hz) {
+        notes.push(stray);
     }
     if total_s < 900.0 {
         notes.push(format!(
@@ -581,6 +614,27 @@ fn merged_mains(done: &[One], base: usize, notes: &mut Vec<String>) -> Mains {
         spread_floor_hz: spread.map(|spread| spread.floor_hz),
         confidence: done[base].confidence,
     }
+}
+
+/// A half-width in hertz, with as many decimals as tell something.
+fn half_width_told(hertz: f64) -> String {
+    if hertz < 1e-5 {
+        return "less than 0.00001 Hz".to_owned();
+    }
+    let decimals = (1.0 - hertz.log10().floor()).clamp(1.0, 6.0) as usize;
+    format!("± {hertz:.decimals$} Hz")
+}
+
+/// What a frequency says that no interconnected grid keeps.
+fn stray_note(frequency_hz: f64) -> Option<String> {
+    let supply = nearest_supply(frequency_hz).filter(|supply| !supply.is_usual(frequency_hz))?;
+    Some(format!(
+        "{frequency_hz:.2} Hz is {:.1} % off {} Hz, more than the {} % that an interconnected system keeps to: an \
+         island or a generator does this, and so does a sustained note; the confidence is lowered for it",
+        100.0 * supply.stray(frequency_hz),
+        supply.nominal_hz,
+        100.0 * supply.usual,
+    ))
 }
 
 fn merged_harmonics(done: &[One], base: usize, mean_hz: f64) -> Vec<Harmonic> {

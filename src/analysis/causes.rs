@@ -3,6 +3,7 @@
 //! Common practice, as a table: a pattern is a function from the measured levels
 //! to a weight and its evidence, or to nothing. To add a cause, add a row.
 
+use super::analyse::top_hz;
 use super::findings::{Cause, Harmonic};
 
 /// One row: what it is, what to try first, and what tells it.
@@ -11,6 +12,9 @@ struct Pattern {
     first_cure: &'static str,
     tells: fn(&Levels) -> Option<(f64, String)>,
 }
+
+/// Orders that must lie below the top for a pattern to be told as such.
+const ENOUGH_ORDERS: u32 = 7;
 
 const PATTERNS: [Pattern; 5] = [
     Pattern {
@@ -47,18 +51,20 @@ const PATTERNS: [Pattern; 5] = [
 
 /// Causes that the pattern points to, the likeliest first; `undetermined` with
 /// what was seen where nothing does. Empty where no harmonic was found.
-pub(super) fn likely_causes(harmonics: &[Harmonic], clipped: bool) -> Vec<Cause> {
-    if harmonics.is_empty() {
-        return Vec::new();
-    }
+///
+/// The sample rate sets how far could be looked: a cause told from fewer than the first
+/// few orders is called possible, no more, and its evidence says where the look ended.
+pub(super) fn likely_causes(harmonics: &[Harmonic], clipped: bool, rate_hz: f64) -> Vec<Cause> {
+    let Some(any) = harmonics.first() else { return Vec::new() };
     let levels = Levels::new(harmonics);
+    let looked = Looked::new(any.frequency_hz / f64::from(any.order), rate_hz);
     let mut pointed: Vec<(f64, Cause)> = PATTERNS
         .iter()
         .filter_map(|pattern| {
             let (weight, evidence) = (pattern.tells)(&levels)?;
             let cause = Cause {
-                cause: pattern.cause.to_owned(),
-                evidence: with_caution(evidence, clipped),
+                cause: looked.softened(pattern.cause),
+                evidence: with_caution(looked.bounded(evidence), clipped),
                 first_cure: pattern.first_cure.to_owned(),
             };
             Some((weight, cause))
@@ -66,7 +72,7 @@ pub(super) fn likely_causes(harmonics: &[Harmonic], clipped: bool) -> Vec<Cause>
         .collect();
     pointed.sort_by(|a, b| b.0.total_cmp(&a.0));
     if pointed.is_empty() {
-        return vec![undetermined(&levels, clipped)];
+        return vec![undetermined(&levels, &looked, clipped)];
     }
     pointed.into_iter().map(|(_, cause)| cause).collect()
 }
@@ -79,7 +85,39 @@ fn with_caution(evidence: String, clipped: bool) -> String {
     }
 }
 
-fn undetermined(levels: &Levels, clipped: bool) -> Cause {
+/// How far the sample rate let one look.
+struct Looked {
+    top_hz: f64,
+    orders: u32,
+}
+
+impl Looked {
+    fn new(fundamental_hz: f64, rate_hz: f64) -> Self {
+        let top_hz = top_hz(rate_hz);
+        Self { top_hz, orders: (top_hz / fundamental_hz) as u32 }
+    }
+
+    /// Too few orders for the patterns, which look at the first ten or so.
+    fn is_short(&self) -> bool {
+        self.orders < ENOUGH_ORDERS
+    }
+
+    fn softened(&self, cause: &str) -> String {
+        if self.is_short() { format!("possibly {cause}") } else { cause.to_owned() }
+    }
+
+    fn bounded(&self, evidence: String) -> String {
+        if !self.is_short() {
+            return evidence;
+        }
+        format!(
+            "{evidence}; at this sample rate one could look up to {:.0} Hz only, and higher orders are not known",
+            self.top_hz
+        )
+    }
+}
+
+fn undetermined(levels: &Levels, looked: &Looked, clipped: bool) -> Cause {
     let strongest = levels.strongest();
     let evidence = format!(
         "{} orders, the strongest {} at {:.1} dBFS, odd orders {:.1} dB and even orders {:.1} dB against it: no \
@@ -92,7 +130,7 @@ fn undetermined(levels: &Levels, clipped: bool) -> Cause {
     );
     Cause {
         cause: "undetermined".to_owned(),
-        evidence: with_caution(evidence, clipped),
+        evidence: with_caution(looked.bounded(evidence), clipped),
         first_cure:
             "record again with the sensor replaced by an equal resistor, and with the input shorted: what \
                      stays enters after the line"
@@ -219,7 +257,7 @@ fn shown(level: f64) -> String {
 mod tests {
     use super::*;
 
-    fn first_cause(levels: &[(u32, f64)]) -> Cause {
+    fn first_cause(levels: &[(u32, f64)], rate_hz: f64) -> Cause {
         let harmonics: Vec<Harmonic> = levels
             .iter()
             .map(|&(order, level_dbfs)| Harmonic {
@@ -231,7 +269,7 @@ mod tests {
                 over_floor_db: 40.0,
             })
             .collect();
-        likely_causes(&harmonics, false).remove(0)
+        likely_causes(&harmonics, false, rate_hz).remove(0)
     }
 
     #[test]
@@ -246,14 +284,24 @@ mod tests {
             (&[(1, -30.0), (2, -33.0), (3, -31.0)], "undetermined"),
         ];
         for (levels, want) in cases {
-            let cause = first_cause(levels);
+            let cause = first_cause(levels, 48_000.0);
             assert!(cause.cause.contains(want), "{levels:?}: {cause:?}");
             assert!(cause.evidence.chars().any(|c| c.is_ascii_digit()), "{}", cause.evidence);
         }
     }
 
     #[test]
+    fn where_the_rate_hides_the_harmonics_the_claim_is_softer() {
+        let hidden = first_cause(&[(1, -20.0)], 150.0);
+        assert!(hidden.cause.starts_with("possibly magnetic"), "{hidden:?}");
+        assert!(hidden.evidence.contains("no other order over the noise"), "{hidden:?}");
+        assert!(hidden.evidence.contains("up to 68 Hz only"), "{hidden:?}");
+        let seen = first_cause(&[(1, -20.0)], 1000.0);
+        assert!(seen.cause.starts_with("magnetic") && !seen.evidence.contains("only"), "{seen:?}");
+    }
+
+    #[test]
     fn nothing_found_has_no_cause() {
-        assert!(likely_causes(&[], false).is_empty());
+        assert!(likely_causes(&[], false, 48_000.0).is_empty());
     }
 }

@@ -1,6 +1,7 @@
 //! Harmonics above half the sample rate, and where they fold to.
 
 use super::findings::FoldedHarmonic;
+use super::supplies::{SUPPLIES, Supply};
 
 /// Highest order listed.
 const ORDERS: u32 = 15;
@@ -24,6 +25,31 @@ pub(super) fn folded_harmonics(fundamental_hz: f64, sample_rate_hz: f64) -> Vec<
 /// Whether the fundamental is half the sample rate, as near as matters.
 pub(super) fn is_half_rate(fundamental_hz: f64, sample_rate_hz: f64) -> bool {
     (fundamental_hz - 0.5 * sample_rate_hz).abs() < 0.01 * fundamental_hz
+}
+
+/// What a sample rate hides of the public supplies, whatever is found.
+pub(super) fn hidden_supplies(sample_rate_hz: f64) -> Vec<String> {
+    let public = SUPPLIES.iter().filter(|supply| supply.is_public());
+    public.filter_map(|supply| hidden(supply, sample_rate_hz)).collect()
+}
+
+fn hidden(supply: &Supply, sample_rate_hz: f64) -> Option<String> {
+    let nominal_hz = supply.nominal_hz;
+    // Up to here a supply of this nominal and its image are apart by more than it strays.
+    let cure = format!("record at {} Hz or more", (2.5 * nominal_hz).ceil());
+    if is_half_rate(nominal_hz, sample_rate_hz) {
+        return Some(format!(
+            "{nominal_hz} Hz is half the sample rate of {sample_rate_hz} Hz: a supply of {nominal_hz} Hz can vanish \
+             there or show at a level that beats, and whether it is there cannot be known; {cure}"
+        ));
+    }
+    (nominal_hz > 0.5 * sample_rate_hz).then(|| {
+        format!(
+            "{nominal_hz} Hz is above half the sample rate of {sample_rate_hz} Hz: a supply of {nominal_hz} Hz appears \
+             at {:.2} Hz and cannot be told there from a signal of that frequency; {cure}",
+            appears_at(nominal_hz, sample_rate_hz)
+        )
+    })
 }
 
 /// Distance to the nearest multiple of the rate.
@@ -70,6 +96,15 @@ mod tests {
         let folded = folded_harmonics(49.98, 100.0);
         assert_eq!(folded[0].order, 1);
         assert!(folded[0].remark.contains("cannot be told apart"));
+    }
+
+    #[test]
+    fn a_rate_that_hides_a_supply_says_which_and_where_it_went() {
+        let at_100 = hidden_supplies(100.0);
+        assert!(at_100[0].contains("50 Hz is half the sample rate"), "{at_100:?}");
+        assert!(at_100[1].contains("appears at 40.00 Hz"), "{at_100:?}");
+        assert!(hidden_supplies(110.0)[0].contains("appears at 50.00 Hz"));
+        assert!(hidden_supplies(128.0).is_empty());
     }
 
     #[test]

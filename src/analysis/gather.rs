@@ -7,6 +7,8 @@ use super::tracker::Cells;
 
 /// Orders up to this one are looked at in short cells also.
 const FINE_ORDERS: u32 = 12;
+/// Length of a short cell in seconds: sidebands 6 Hz away are then still seen.
+const FINE_S: f64 = 0.08;
 
 /// Phasors and the noise beside them, gathered into cells.
 pub(super) struct Gather {
@@ -39,7 +41,11 @@ impl Gather {
         let noise = NoiseBeside::new(blocks, bank.hop_s(), orders.len());
         let cells = Cells::new(orders, bank.hop_s(), together);
         let low: Vec<u32> = orders.iter().copied().filter(|&k| k <= FINE_ORDERS).collect();
-        let fine = Cells::new(&low, bank.hop_s(), if bank.hop_s() < 0.1 { together.min(2) } else { 1 });
+        // Blocks of 400 Hz are so short that notes tens of hertz away would fold onto a cell's
+        // middle, as steady as a line: there each block is looked at.
+        let fine_s = if reference.mean_frequency_hz() > 100.0 { 0.0 } else { FINE_S };
+        let fine_blocks = ((fine_s / bank.hop_s()).round() as usize).clamp(1, together);
+        let fine = Cells::new(&low, bank.hop_s(), fine_blocks);
         Self { bank, noise, cells, fine }
     }
 
@@ -59,6 +65,8 @@ impl Gather {
         }
         self.cells.finish();
         self.cells.density = self.noise.densities();
+        let low = self.cells.orders.iter().zip(&self.cells.density).filter(|(k, _)| **k <= FINE_ORDERS);
+        self.fine.density = low.map(|(_, density)| *density).collect();
         Gathered { cells: self.cells, fine: self.fine }
     }
 }

@@ -9,7 +9,7 @@ use super::reference::{mean_frequency_hz, motion, reference_track};
 use super::supplies::is_usual;
 use super::survey::{SURVEY_TOP_HZ, Surveyed};
 use super::tracker::track;
-use super::verdict::Verdict;
+use super::verdict::{Company, Verdict};
 use rayon::prelude::*;
 
 /// Score of a comb in the survey below which no second look is taken.
@@ -99,6 +99,7 @@ impl Trial {
             frequency_hz,
             duration_s,
             &motion(&reference, &tracked, survey.opening_rate_hz),
+            Company::Alone,
         );
         let lines = verdict.lasting.iter().map(|&k| (k, tracked.lines[k as usize - 1].power)).collect();
         Some(Self { candidate, frequency_hz, verdict, lines })

@@ -20,6 +20,7 @@ mod spectrum;
 mod spread;
 mod supplies;
 mod survey;
+mod swell;
 mod tracker;
 mod verdict;
 mod window;

@@ -109,7 +109,7 @@ impl Cells {
     }
 
     /// Noise variance of each component of a cell.
-    fn variance(&self, line: usize) -> f64 {
+    pub fn variance(&self, line: usize) -> f64 {
         let values = &self.values[line];
         let power = values.iter().map(Complex64::norm_sqr).sum::<f64>() / values.len().max(1) as f64;
         // Where nothing but the line is there, arithmetic is the noise.
@@ -222,6 +222,14 @@ pub(super) fn turned<'a>(
 ) -> impl Iterator<Item = Complex64> + 'a {
     let k = f64::from(cells.orders[line]);
     cells.values[line].iter().zip(phase).map(move |(z, p)| z * Complex64::cis(-k * p))
+}
+
+/// A line's phasors in short cells, turned along the track of the longer ones.
+pub(super) fn along_track(fine: &Cells, line: usize, tracked: &Tracked) -> Vec<Complex64> {
+    let times = tracked.phases.time_s.iter().copied();
+    let knots: Vec<(f64, f64)> = times.zip(tracked.smoothed.phase_rad.iter().copied()).collect();
+    let phase: Vec<f64> = fine.time_s.iter().map(|&t| between(&knots, t)).collect();
+    turned(fine, line, &phase).collect()
 }
 
 /// Mean phasor, noise variance of a component, and weights where the noise is

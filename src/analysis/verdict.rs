@@ -2,7 +2,8 @@
 
 use super::comb::weight;
 use super::neighbours::{Standing, standings};
-use super::supplies::{FAMILIES, SUPPLIES, nearest_supply, prior};
+use super::supplies::{FAMILIES, SUPPLIES, is_usual, nearest_supply, prior};
+use super::swell::swell;
 use super::tracker::{Cells, Tracked};
 
 /// Power over noise in 1/T, from medians over time, from which an order counts.
@@ -21,11 +22,23 @@ const MOST_FROM_ONE: f64 = 40.0;
 /// Evidence at which the find is as likely chance as not.
 const EVEN: f64 = 14.0;
 
+/// RMS swing of the amplitude, as a share, that a generator's regulator allows (common
+/// practice keeps the voltage within a tenth).
+const MOST_SWELL: f64 = 0.1;
+/// The same for any supply, whose loads may be switched while it is recorded.
+const MOST_SWELL_OF_ANY: f64 = 0.6;
+/// Power over the highest pair of sidebands that a machine's line has (40 dB).
+const STEADY_AS_A_MACHINE: f64 = 10_000.0;
+/// Share of the power about its frequency that a machine's line has.
+const LEAST_SHARE: f64 = 0.05;
+/// Most that the score reaches just outside the usual range of a supply.
+const ISLAND_CEILING: f64 = 0.9;
+/// Most that it reaches where two supplies fit.
+const AMBIGUOUS_CEILING: f64 = 0.6;
+
 /// Share of the frequency from which a wander is a far one.
 const FAR: f64 = 0.02;
 
-/// Share of its nominal within which a railway's supply is looked for: it is held well.
-const RAILWAY_STRAY: f64 = 0.03;
 /// Change of frequency in a second, as a share of it, that no supply shows: struck
 /// notes, whose phase is set anew each time, do. Grids keep under 1 Hz/s in faults.
 const HASTY: f64 = 0.008;
@@ -37,6 +50,15 @@ pub(super) struct Motion {
     pub range_hz: f64,
     /// RMS change in a second.
     pub hz_per_s: f64,
+}
+
+/// What else hums while a comb is followed.
+#[derive(Debug, Clone, Copy, PartialEq, Eq)]
+pub(super) enum Company {
+    /// Nothing that is known.
+    Alone,
+    /// A supply of another frequency, whose lines shake the track a little.
+    BesideAnother,
 }
 
 /// The verdict on one comb.
@@ -57,16 +79,26 @@ impl Verdict {
     /// Evidence is the sum over lasting orders of their log-likelihood ratio
     /// (power over noise in 1/T), less what the best of all frequencies tried
     /// shows by chance. Confidence is 1/(1 + e^−(evidence − 14)/3): ½ where the
-    /// find may as well be chance or programme, 0.95 nine nats above; it is
-    /// halved where the order numbers cannot be known.
-    pub fn of(fine: &Cells, tracked: &Tracked, frequency_hz: f64, duration_s: f64, motion: &Motion) -> Self {
+    /// find may as well be chance or programme, 0.95 nine nats above. What is over
+    /// ½ is pressed under 0.9 to 0.7 outside the usual range of a supply, and
+    /// under 0.6 where the order numbers cannot be known; a tenth of it is left
+    /// where the comb cannot be a supply's.
+    pub fn of(
+        fine: &Cells,
+        tracked: &Tracked,
+        frequency_hz: f64,
+        duration_s: f64,
+        motion: &Motion,
+        company: Company,
+    ) -> Self {
         let lines = fine.orders.iter().zip(&tracked.lines).zip(standings(fine, tracked));
-        let lasting: Vec<(u32, f64)> = lines
+        let heard: Vec<Heard> = lines
             .filter(|((_, line), _)| line.lasting >= COUNTS && line.steadiness >= STEADY && line.throughout)
             .filter(|((_, line), _)| line.presence >= SELDOM)
-            .filter(|(_, beside)| beside.is_none_or(|beside| stands_alone(&beside)))
-            .map(|((&order, line), _)| (order, line.lasting))
+            .map(|((&order, line), beside)| Heard { order, lasting: line.lasting, beside })
             .collect();
+        let alone = heard.iter().filter(|line| line.beside.is_none_or(|beside| stands_alone(&beside)));
+        let lasting: Vec<(u32, f64)> = alone.map(|line| (line.order, line.lasting)).collect();
         let family = FAMILIES.iter().find(|f| f.from_hz <= frequency_hz && frequency_hz <= f.to_hz);
         let searched_hz = family.map_or(30.0, |f| f.to_hz - f.from_hz);
         let tried = (searched_hz * duration_s.max(1.0) * 5.0).ln();
@@ -76,19 +108,65 @@ impl Verdict {
         // One line that moves far is a gliding tone: a supply's other orders move with it.
         let alone_far =
             motion.range_hz > FAR * frequency_hz && (orders.len() < 2 || !orders.iter().any(|&k| k <= 2));
+        let expected =
+            nearest_supply(frequency_hz).is_some_and(|s| s.is_public() && s.is_usual(frequency_hz));
+        let played = if expected {
+            is_beside_the_line(fine, tracked, &heard, &orders)
+        } else {
+            is_played(fine, tracked, &heard, company)
+        };
         let hasty = motion.hz_per_s > HASTY * frequency_hz.min(100.0);
-        let plausible = are_a_supplys(&orders, frequency_hz) && !alone_far && !hasty;
+        let plausible = are_a_supplys(&orders, frequency_hz) && !alone_far && !hasty && !played;
         let ambiguous = if plausible { other_fit(&orders, frequency_hz) } else { None };
-        let mut confidence = 1.0 / (1.0 + (-(evidence - EVEN) / 3.0).exp());
-        if !plausible {
-            confidence *= 0.1;
-        }
+        let chance = 1.0 / (1.0 + (-(evidence - EVEN) / 3.0).exp());
+        let confidence =
+            if plausible { below_ceiling(chance, frequency_hz, ambiguous.is_some()) } else { 0.1 * chance };
         let found = confidence >= 0.5;
-        if ambiguous.is_some() {
-            confidence *= 0.5;
-        }
         Self { found, confidence, evidence, lasting: orders, ambiguous }
     }
+}
+
+/// A line that is there all the time.
+struct Heard {
+    order: u32,
+    lasting: f64,
+    beside: Option<Standing>,
+}
+
+/// Whether a comb swells or shakes as somebody's note does. Where generators, islands,
+/// railways and aircraft may be, notes are too: there a comb must be as steady as a machine.
+fn is_played(fine: &Cells, tracked: &Tracked, heard: &[Heard], company: Company) -> bool {
+    let orders: Vec<u32> = heard.iter().map(|line| line.order).collect();
+    let swells = swell(fine, tracked, &orders).is_none_or(|swell| swell > MOST_SWELL);
+    let shaken = heard.iter().filter(|line| line.beside.is_none_or(|beside| is_shaken(&beside))).count();
+    // A louder line that the cells fold onto this one turns in them.
+    let is_image = |line: &Heard| line.beside.is_some_and(|beside| beside.share < LEAST_SHARE);
+    swells || (company == Company::Alone && (2 * shaken > heard.len() || heard.iter().any(is_image)))
+}
+
+/// Whether what is heard where a public supply may be is somebody else's: the flank of a
+/// note beside it comes and goes against the supply's phase, and of the comb of a
+/// rhythm hardly a line stands alone.
+fn is_beside_the_line(fine: &Cells, tracked: &Tracked, heard: &[Heard], alone: &[u32]) -> bool {
+    let comes_and_goes = swell(fine, tracked, alone).is_some_and(|swell| swell > MOST_SWELL_OF_ANY);
+    comes_and_goes || 4 * alone.len() < heard.len()
+}
+
+fn is_shaken(beside: &Standing) -> bool {
+    beside.over_vibrato < (beside.over_noise / 20.0).clamp(ALONE, STEADY_AS_A_MACHINE)
+}
+
+/// A score from ½ up, pressed together under the most that can be known: less the
+/// farther a frequency is from what interconnected systems keep, and little where the
+/// order numbers are a guess.
+fn below_ceiling(score: f64, frequency_hz: f64, ambiguous: bool) -> f64 {
+    let remote = nearest_supply(frequency_hz).map_or(1.0, |supply| supply.remoteness(frequency_hz));
+    let ceiling = match (ambiguous, is_usual(frequency_hz)) {
+        (true, _) => AMBIGUOUS_CEILING,
+        (_, true) => 1.0,
+        _ => ISLAND_CEILING - 0.2 * remote,
+    };
+    if score < 0.5 { score } else { 0.5 + (score - 0.5) * (2.0 * ceiling - 1.0) }
 }
 
 /// Whether these orders can be all that is heard of a supply. A railway's or an
@@ -99,16 +177,19 @@ impl Verdict {
 fn are_a_supplys(orders: &[u32], frequency_hz: f64) -> bool {
     let Some(supply) = nearest_supply(frequency_hz) else { return false };
     let has = |order: u32| orders.contains(&order);
-    let stray = (frequency_hz / supply.nominal_hz - 1.0).abs();
-    let only = |of: u32| orders.len() >= 2 && has(of) && orders.iter().all(|k| k.is_multiple_of(of));
-    match supply.nominal_hz {
-        50.0 | 60.0 => {
-            let third = has(3) && (has(5) || (orders.len() >= 2 && stray <= supply.usual));
-            has(1) || has(2) || third || only(3) || only(6)
-        }
-        hz if hz < 50.0 => has(1) && stray <= RAILWAY_STRAY,
-        _ => has(1) && (orders.len() >= 2 || stray <= supply.usual),
+    let usual = supply.is_usual(frequency_hz);
+    // Without its fundamental a comb is counted from a guess: 110 Hz and its multiples
+    // are a note, and only at 50 or 60 Hz more likely a rectifier's.
+    let guessed = orders.iter().copied().reduce(gcd).is_none_or(|common| common > 1);
+    if guessed && !usual {
+        return false;
     }
+    let only = |of: u32| orders.len() >= 2 && has(of) && orders.iter().all(|k| k.is_multiple_of(of));
+    if !supply.is_public() {
+        return has(1);
+    }
+    let third = has(3) && (has(5) || (orders.len() >= 2 && usual));
+    has(1) || has(2) || third || only(3) || only(6)
 }
 
 fn stands_alone(beside: &Standing) -> bool {
@@ -122,11 +203,11 @@ fn other_fit(orders: &[u32], frequency_hz: f64) -> Option<f64> {
     let common = orders.iter().copied().reduce(gcd)?;
     let lowest_hz = f64::from(common) * frequency_hz;
     let own = nearest_supply(frequency_hz)?;
-    let public = SUPPLIES.iter().filter(|supply| supply.nominal_hz == 50.0 || supply.nominal_hz == 60.0);
+    let public = SUPPLIES.iter().filter(|supply| supply.is_public());
     let others = public.filter(|supply| supply.nominal_hz != own.nominal_hz);
     others
         .map(|supply| (supply, (lowest_hz / supply.nominal_hz).round().max(1.0)))
-        .find(|(supply, n)| (lowest_hz / n / supply.nominal_hz - 1.0).abs() <= supply.usual && *n <= 24.0)
+        .find(|(supply, n)| supply.is_usual(lowest_hz / n) && *n <= 24.0)
         .map(|(supply, _)| supply.nominal_hz)
 }
 
