@@ -84,7 +84,7 @@ pub(super) fn text(analysis: &Analysis) -> String {
         );
     }
     for cause in &analysis.causes {
-        text += &wrapped("  Likely      ", &cause.cause);
+        text += &wrapped("  Cause       ", &cause.cause);
         text += &wrapped("    evidence  ", &cause.evidence);
         text += &wrapped("    cure      ", &cause.first_cure);
     }
