@@ -236,3 +236,29 @@ fn the_json_holds_every_key_of_the_contract() {
     }
     assert!(answer["plan"]["alternatives"].as_array().unwrap().len() >= 2);
 }
+
+#[test]
+fn a_recording_without_hum_is_not_said_to_meet_the_brief() {
+    let home = tempfile::tempdir().unwrap();
+    let [out, heard, quiet] = ["out", "heard", "quiet.wav"].map(|name| in_home(home.path(), name));
+    run_tide_gauge(&out);
+    let spec = hound::WavSpec {
+        channels: 1,
+        sample_rate: 1000,
+        bits_per_sample: 16,
+        sample_format: hound::SampleFormat::Int,
+    };
+    let mut writer = hound::WavWriter::create(&quiet, spec).unwrap();
+    let mut state = 1_u32;
+    for _ in 0..10_000 {
+        state = state.wrapping_mul(1_664_525).wrapping_add(1_013_904_223);
+        writer.write_sample((state >> 20) as i16 - 2048).unwrap();
+    }
+    writer.finalize().unwrap();
+    let plan = format!("{out}/plan.yaml");
+    let output = notchwright(&["simulate", &quiet, "--plan", &plan, "--out", &heard]);
+    let printed = String::from_utf8(output.stdout).unwrap();
+    assert_eq!(output.status.code(), Some(1), "{printed}");
+    assert!(printed.contains("no mains hum was found"), "{printed}");
+    assert!(!printed.contains("meets the brief"), "{printed}");
+}

@@ -230,6 +230,21 @@ fn whatever_the_brief_the_answer_is_a_plan_from_listed_parts_or_a_reason() {
 }
 
 #[test]
+fn a_slow_loop_of_little_bandwidth_needs_three_parts() {
+    let (_, tide) = tide_gauge();
+    let brief = LineBrief {
+        source: Source { resistance_ohm: 250.0, inductance_h: 0.0 },
+        load: Load { resistance_ohm: 1e6, capacitance_f: 0.0 },
+        keep: vec![KeepBand { from_hz: 0.0, to_hz: 1.0, allowed_db: 0.2 }],
+        orders: Some(vec![1, 2]),
+        ..tide
+    };
+    let plan = planned(&(findings(50.0, &[(1, -20.0), (2, -35.0)]), brief), &Stock::built_in());
+    assert!(plan.design.met);
+    assert_eq!(plan.design.circuit.parts.len(), 3, "{}", plan.design.summary);
+}
+
+#[test]
 fn what_cannot_be_had_is_answered_with_the_ends_of_the_trade_off_and_what_stands_in_the_way() {
     let plan = planned(&example_room(), &bench_stock());
     assert!(!plan.design.met);

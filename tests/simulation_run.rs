@@ -434,7 +434,7 @@ fn loss_of_a_band_reads_the_same_on_the_samples_as_from_the_response() {
     let loss = third.before_dbfs - third.after_dbfs;
     assert!((loss - insertion_loss_db(&traps(60.0), third.mid_hz)).abs() < 0.2, "{loss}");
     assert!(got.run.simulation.residual.is_empty() && got.run.simulation.hum_a_weighted_dbfs.is_none());
-    assert!(got.run.simulation.notes.iter().any(|note| note.contains("no hum was found")));
+    assert!(got.run.simulation.misses.iter().any(|miss| miss.contains("no mains hum was found")));
 }
 
 #[test]

@@ -55,11 +55,8 @@ pub(super) fn text(analysis: &Analysis) -> String {
         }
     }
     let mains = &analysis.mains;
-    if let (Some(spread), Some(floor)) = (mains.spread_hz, mains.spread_floor_hz) {
-        text += &wrapped(
-            "  Wander      ",
-            &format!("{} for 95 % of the time ({})", report::deviation(spread), report::noise_alone(floor)),
-        );
+    if let Some(spread) = mains.spread_hz {
+        text += &wrapped("  Wander      ", &report::wander(spread, mains.spread_floor_hz));
     }
     if mains.found {
         text += &wrapped("  Confidence  ", &report::confidence(mains.confidence));

@@ -74,7 +74,7 @@ fn in_a_line(design: &Design) -> String {
     let losses: Vec<String> =
         design.keep.iter().map(|band| format!("{:.2}", band.loss_worst_db.abs())).collect();
     format!(
-        "{}: takes off {} dB, costs {} dB, met by {:.1} % of builds",
+        "{}: 95 % of builds take off {} dB and cost {} dB; {:.1} % meet the brief",
         design.summary,
         one_by_one_or_range(&reductions),
         losses.join(", "),

@@ -203,7 +203,7 @@ impl TrimmerLine {
         let share = if setting_ohm > 0.0 { track_ohm / setting_ohm } else { 1.0 };
         Part {
             value: print(track_ohm, Unit::Ohm),
-            tolerance_pct: percent(self.resolution * share),
+            tolerance_pct: two_digits_up(100.0 * self.resolution * share),
             drift_per_k: self.drift_per_k,
             setting_ohm: Some(setting_ohm),
             material: Some(self.kind.clone()),
@@ -212,6 +212,14 @@ impl TrimmerLine {
             ..Part::ideal(reference, PartKind::Trimmer, track_ohm)
         }
     }
+}
+
+/// A positive value to two digits, never less than it is.
+fn two_digits_up(value: f64) -> f64 {
+    let decimals = 1 - value.log10().floor() as i32;
+    let scale = 10f64.powi(decimals.abs());
+    let up = |value: f64| (value * (1.0 - 1e-12)).ceil();
+    if decimals >= 0 { up(value * scale) / scale } else { up(value / scale) * scale }
 }
 
 /// A fraction in percent, free of the noise that 100·0.07 would leave.

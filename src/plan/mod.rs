@@ -209,13 +209,14 @@ fn told(made: Vec<Made>, most: usize) -> Vec<Made> {
 }
 
 /// Frequencies at which the band of builds is told: 48 an octave near the lines,
-/// 12 an octave elsewhere, from a fiftieth of the fundamental to beyond all that
-/// is kept or reduced.
+/// 12 an octave elsewhere, from below all that is kept, or a fiftieth of the
+/// fundamental, to beyond all that is kept or reduced.
 fn band_frequencies(task: &Task) -> Vec<f64> {
     let highest_line = task.orders.iter().map(|order| order.centre_hz).fold(task.centre_hz, f64::max);
     let highest_kept = task.keep.iter().map(|band| band.to_hz).fold(0.0, f64::max);
     let to_hz = (2.0 * highest_line).max(1.2 * highest_kept);
-    let from_hz = task.centre_hz / 50.0;
+    let lowest = |band: &KeepBand| if band.from_hz > 0.0 { band.from_hz / 1.5 } else { band.to_hz / 20.0 };
+    let from_hz = task.keep.iter().map(lowest).fold(task.centre_hz / 50.0, f64::min);
     let count = (12.0 * (to_hz / from_hz).log2()).ceil() as usize;
     let mut points: Vec<f64> =
         (0..=count).map(|k| from_hz * (to_hz / from_hz).powf(k as f64 / count as f64)).collect();

@@ -2,7 +2,7 @@
 
 use super::requirements::Task;
 use super::search::Made;
-use super::window::{least_q_for_bands, windows};
+use super::window::{least_q_for_bands, widest_spread_hz, windows};
 use super::{Design, QWindow, span};
 use crate::parts::Stock;
 
@@ -106,7 +106,7 @@ pub fn obstacles(made: &[Made], task: &Task, stock: &Stock, temperature_c: (f64,
         .iter()
         .filter(|window| window.closed_by.is_some())
         .max_by(|a, b| (a.q_min / a.q_max).total_cmp(&(b.q_min / b.q_max)));
-    all.extend(narrowest.map(|window| closed_window(window, task, stock)));
+    all.extend(narrowest.map(|window| closed_window(window, task, stock, temperature_c)));
     all
 }
 
@@ -124,8 +124,10 @@ fn misses(design: &Design) -> Vec<String> {
         .collect();
     let more = missed.split_off(missed.len().min(TOLD_ORDERS));
     let orders = missed.iter().map(|(order, reduction_db, short_db)| {
+        let way = if *reduction_db < 0.0 { "up" } else { "down" };
         format!(
-            "order {order} goes down by {reduction_db:.1} dB in 95 % of builds, {short_db:.1} dB less than asked"
+            "order {order} goes {way} by {:.1} dB in 95 % of builds, {short_db:.1} dB less than asked",
+            reduction_db.abs()
         )
     });
     let worst = more.iter().max_by(|a, b| a.2.total_cmp(&b.2));
@@ -192,8 +194,16 @@ fn counted_orders(task: &Task) -> String {
     }
 }
 
+/// Largest loss that is offered as a way out, decibels.
+const MOST_LOSS_DB: f64 = 20.0;
+
+/// Rounded so that what opens the window still does.
+fn up_to_tenths(value: f64) -> f64 {
+    (10.0 * value - 1e-6).ceil() / 10.0
+}
+
 /// Why the window is closed, and what each bound alone would have to become.
-fn closed_window(window: &QWindow, task: &Task, stock: &Stock) -> String {
+fn closed_window(window: &QWindow, task: &Task, stock: &Stock, temperature_c: (f64, f64)) -> String {
     let order = task.orders.iter().find(|order| order.order == window.order).expect("a window has its order");
     let coil_q = stock.coils.iter().map(|coil| coil.q(order.centre_hz)).fold(0.0, f64::max);
     let mut cures: Vec<String> = Vec::new();
@@ -202,17 +212,19 @@ fn closed_window(window: &QWindow, task: &Task, stock: &Stock) -> String {
         change(&mut changed);
         least_q_for_bands(&changed, order) <= window.q_max
     };
-    let loss = smallest(1.0, 200.0, |factor| {
+    // More loss than this is no wanted signal any more.
+    let most = task.keep.iter().map(|band| MOST_LOSS_DB / band.allowed_db).fold(f64::INFINITY, f64::min);
+    let loss = smallest(1.0, most, |factor| {
         opens(&|task| task.keep.iter_mut().for_each(|band| band.allowed_db *= factor))
     });
     if let Some(factor) = loss {
         let allowed: Vec<String> =
-            task.keep.iter().map(|band| format!("{:.1}", band.allowed_db * factor)).collect();
+            task.keep.iter().map(|band| format!("{:.1}", up_to_tenths(band.allowed_db * factor))).collect();
         cures.push(format!("a loss of {} dB allowed", allowed.join(" and ")));
     }
     let most_hz = task.centre_hz / 2.0;
     if let Some(guard_hz) = smallest(task.guard_hz, most_hz, |hz| opens(&|task| task.guard_hz = hz)) {
-        cures.push(format!("a guard of {guard_hz:.1} Hz"));
+        cures.push(format!("a guard of {:.1} Hz", up_to_tenths(guard_hz)));
     }
     if window.closed_by.as_deref() == Some("coil") {
         cures.push(format!(
@@ -221,9 +233,9 @@ fn closed_window(window: &QWindow, task: &Task, stock: &Stock) -> String {
             order.centre_hz
         ));
     }
-    if window.closed_by.as_deref() == Some("spread") {
-        let detuning = 1.0 / (2.0 * window.q_min * (10f64.powf(order.target_db / 10.0) - 1.0).sqrt());
-        let wander_hz = detuning * order.centre_hz / f64::from(order.order);
+    if window.closed_by.as_deref() == Some("spread")
+        && let Some(wander_hz) = widest_spread_hz(window.q_min, order, stock, temperature_c)
+    {
         // Two digits, whatever it is: a zero would say nothing.
         let decimals = (1 - wander_hz.log10().floor() as i32).clamp(0, 9) as usize;
         cures.push(format!(

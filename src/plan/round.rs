@@ -15,7 +15,9 @@ const BETWEEN: usize = 6;
 /// Where two capacitors side by side may stand for one.
 #[derive(Debug, Clone, Copy, PartialEq, Eq)]
 pub enum Pairs {
-    /// Nowhere: single values of the list.
+    /// Nowhere, and nothing larger than the largest listed either.
+    Never,
+    /// Nowhere but where more than the largest listed is wanted.
     Nowhere,
     /// In the slots of this freedom.
     In(usize),
@@ -26,7 +28,7 @@ pub enum Pairs {
 impl Pairs {
     fn allow(self, freedom: usize) -> bool {
         match self {
-            Self::Nowhere => false,
+            Self::Never | Self::Nowhere => false,
             Self::In(only) => only == freedom,
             Self::Everywhere => true,
         }
@@ -58,7 +60,7 @@ pub fn rounded(problem: &Problem, from: &Point, trimmed: &[usize], pairs: Pairs)
         }
         let mut next: Vec<Point> = Vec::new();
         for point in &beam {
-            for choice in choices(problem, point, &slots, pairs.allow(freedom)) {
+            for choice in choices(problem, point, &slots, pairs.allow(freedom), pairs != Pairs::Never) {
                 let mut trial = point.clone();
                 for (&slot, made) in slots.iter().zip(choice) {
                     trial.made[slot] = Some(made);
@@ -83,13 +85,13 @@ pub fn rounded(problem: &Problem, from: &Point, trimmed: &[usize], pairs: Pairs)
 
 /// Ways to make all slots of one freedom: all rounded down, all rounded up, and
 /// all in pairs.
-fn choices(problem: &Problem, point: &Point, slots: &[usize], pairs: bool) -> Vec<Vec<Made>> {
+fn choices(problem: &Problem, point: &Point, slots: &[usize], pairs: bool, banks: bool) -> Vec<Vec<Made>> {
     let per_slot: Vec<Vec<Made>> = slots
         .iter()
         .map(|&slot| {
             let value = problem.assembly.slot_value(slot, &point.x, &point.made, problem.shelf);
             let kind = slot_kind(&problem.assembly.slots[slot]);
-            let mut made = problem.shelf.singles(kind, value);
+            let mut made = problem.shelf.singles(kind, value, banks);
             if pairs {
                 made.extend(problem.shelf.pair(kind, value));
             }

@@ -10,7 +10,7 @@ use super::nearest;
 use super::optimise::{Point, Problem, QUICK, THOROUGH, Variation};
 use super::requirements::{COARSE, Lean, Rule, Sample, Task, samples};
 use super::round::{Pairs, rounded};
-use super::shelf::Shelf;
+use super::shelf::{Shelf, slot_kind};
 use super::trim::adjustable;
 use crate::network::kinds::{Draft, KINDS, Line, Setting};
 use crate::network::{Circuit, Load, Source};
@@ -22,6 +22,8 @@ pub const MOST_SECTIONS: usize = 3;
 const SIFTING_BUILDS: usize = 3;
 /// Builds drawn for choosing values.
 const CHOOSING_BUILDS: usize = 16;
+/// Networks of the same kinds, different in number of parts, that are looked into.
+const ALIKE: usize = 6;
 /// Networks that are made from the list and built.
 const MADE: usize = 10;
 /// The same, in a search that leans to one side.
@@ -325,7 +327,7 @@ impl Search<'_> {
             let key = (candidate.signature(), candidate.assembly.slots.len(), candidate.assembly.coils());
             let same = chosen.iter().filter(|other| **other == key).count();
             let alike = chosen.iter().filter(|other| other.0 == key.0).count();
-            let keep = same < 1 && alike < 4;
+            let keep = same < 1 && alike < ALIKE;
             if keep {
                 chosen.push(key);
             }
@@ -388,14 +390,17 @@ impl Search<'_> {
         let one_place = (0..if freedoms <= FEW { freedoms } else { 0 }).map(Pairs::In);
         let ways: Vec<Pairs> = match self.lean {
             Lean::Even => {
-                std::iter::once(Pairs::Nowhere).chain(one_place).chain([Pairs::Everywhere]).collect()
+                // More margin than asked for is not worth a bank of capacitors.
+                let never = wants_banks(&problem, candidate).then_some(Pairs::Never);
+                let nowhere = std::iter::once(Pairs::Nowhere);
+                never.into_iter().chain(nowhere).chain(one_place).chain([Pairs::Everywhere]).collect()
             }
             _ => vec![Pairs::Everywhere],
         };
         for pairs in ways {
             let Some(made) = self.made_with(&problem, candidate, pairs) else { continue };
             // Where more than a neighbouring value is wrong, pairs do not mend it.
-            let settled = made.design.met || made.worst_miss > HOPELESS;
+            let settled = made.design.met || made.worst_miss > HOPELESS && pairs != Pairs::Never;
             if all.iter().all(|other| other.design.circuit != made.design.circuit) {
                 all.push(made);
             }
@@ -432,6 +437,17 @@ impl Search<'_> {
         let (design, worst_miss) = design(finished, self.task, self.temperature_c, count, self.seed);
         Some(Made { design, worst_miss })
     }
+}
+
+/// Whether a capacitance of the candidate lies above the largest listed.
+fn wants_banks(problem: &Problem, candidate: &Candidate) -> bool {
+    let Point { x, made, .. } = &candidate.point;
+    let largest_f = problem.shelf.largest_capacitor_f();
+    (0..candidate.assembly.slots.len()).any(|slot| {
+        let kind = slot_kind(&candidate.assembly.slots[slot]);
+        kind == PartKind::Capacitor
+            && candidate.assembly.slot_value(slot, x, made, problem.shelf) > 1.001 * largest_f
+    })
 }
 
 fn covers(drafts: &[Draft], orders: &[u32]) -> bool {

@@ -54,6 +54,11 @@ impl<'a> Shelf<'a> {
         Some((self.capacitors.first()?.value_si, LARGEST_BANK as f64 * self.capacitors.last()?.value_si))
     }
 
+    /// The largest single capacitor, or zero without capacitors.
+    pub fn largest_capacitor_f(&self) -> f64 {
+        self.capacitors.last().map_or(0.0, |listed| listed.value_si)
+    }
+
     /// Smallest and largest listed resistance, or `None` without resistors.
     pub fn resistance_ohm(&self) -> Option<(f64, f64)> {
         Some((self.resistors.first()?.value_si, self.resistors.last()?.value_si))
@@ -75,9 +80,9 @@ impl<'a> Shelf<'a> {
         &list[start..end.max(start)]
     }
 
-    /// The listed values next below and next above, one part each; above the
-    /// largest capacitor, the fewest side by side.
-    pub fn singles(&self, kind: PartKind, value_si: f64) -> Vec<Made> {
+    /// The listed values next below and next above, one part each; with `banks`, above
+    /// the largest capacitor also the fewest side by side.
+    pub fn singles(&self, kind: PartKind, value_si: f64, banks: bool) -> Vec<Made> {
         let list = self.list(kind);
         let above = list.partition_point(|listed| listed.value_si < value_si);
         let mut made: Vec<Made> = [above.checked_sub(1), Some(above)]
@@ -86,7 +91,7 @@ impl<'a> Shelf<'a> {
             .filter_map(|index| list.get(index))
             .map(|&listed| Made { parts: vec![listed], value_si: listed.value_si })
             .collect();
-        if above == list.len() && kind == PartKind::Capacitor {
+        if banks && above == list.len() && kind == PartKind::Capacitor {
             made.extend(self.bank(value_si));
         }
         made

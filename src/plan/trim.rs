@@ -65,7 +65,7 @@ fn padded(shelf: &Shelf, trim: &NaturalTrim, value_si: f64, reach_si: f64) -> Op
     let mut best: Option<(f64, Listed, Made)> = None;
     for &pad in pads {
         let rest = value_si - pad.value_si;
-        let singles = shelf.singles(PartKind::Capacitor, rest);
+        let singles = shelf.singles(PartKind::Capacitor, rest, true);
         for made in singles.into_iter().chain(shelf.pair(PartKind::Capacitor, rest)) {
             // A second fixed capacitor is worth a thousandth of the value.
             let off = (made.value_si - rest).abs() / value_si + 1e-3 * (made.parts.len() - 1) as f64;
@@ -99,7 +99,7 @@ fn turned(shelf: &Shelf, trim: &NaturalTrim, value_si: f64, reach_si: f64) -> Op
     let track_si = offer.value_si;
     let rest = value_si - track_si / 2.0;
     let fixed: Vec<Listed> = shelf
-        .singles(PartKind::Resistor, rest)
+        .singles(PartKind::Resistor, rest, false)
         .into_iter()
         .find(|made| rest > 0.05 * value_si && (made.value_si / rest - 1.0).abs() < 0.1)
         .map_or(Vec::new(), |made| made.parts);

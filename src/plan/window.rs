@@ -37,6 +37,15 @@ pub fn windows(task: &Task, stock: &Stock, design: &Design, temperature_c: (f64,
     task.orders.iter().map(|order| window(task, order, stock, design, temperature_c)).collect()
 }
 
+/// The widest design spread, in hertz at the fundamental, at which a single notch of
+/// this Q still reaches the order's target beside trim residue and temperature;
+/// `None` where these alone are too much.
+pub fn widest_spread_hz(q: f64, order: &OrderTask, stock: &Stock, temperature_c: (f64, f64)) -> Option<f64> {
+    let detuning = 1.0 / (2.0 * q * (10f64.powf(order.target_db / 10.0) - 1.0).sqrt());
+    let left = detuning - TRIM_RESIDUE - drift_detuning(stock, temperature_c);
+    (left > 0.0).then(|| left * order.centre_hz / f64::from(order.order))
+}
+
 fn window(
     task: &Task,
     order: &OrderTask,

@@ -19,7 +19,7 @@ pub use cautions::{CAUTIONS, Caution};
 pub use excerpt::{Excerpt, Recordings};
 pub use partslist::parts_csv;
 pub use schematic::schematic_svg;
-pub use wording::{confidence, deviation, noise_alone};
+pub use wording::{confidence, deviation, noise_alone, wander};
 
 use crate::analysis::{Analysis, Spectrum};
 use crate::plan::Plan;

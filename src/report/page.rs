@@ -7,8 +7,8 @@ use super::charts::{self, Chart, Size};
 use super::excerpt::OUTLINE_COLUMNS;
 use super::verdict::{self, level_with_volts, loss_words};
 use super::wording::{
-    band, confidence, counted, dbfs, decibel, deviation, duration, hertz, hertz_short, listing, noise_alone,
-    number, sentence, short, si, small_hertz, unbroken, with_unit,
+    band, confidence, counted, dbfs, decibel, deviation, duration, hertz, hertz_short, listing, number,
+    sentence, short, si, small_hertz, unbroken, wander, with_unit,
 };
 use super::{CAUTIONS, Excerpt, Material, ReportError, bench, partslist, wav};
 use crate::plan::{Design, ReductionTarget};
@@ -140,18 +140,6 @@ fn found(material: &Material) -> Vec<Fact> {
     }
     facts.push(fact("Confidence", confidence(mains.confidence)));
     facts
-}
-
-/// How far the frequency wanders, and how much of that could be noise.
-fn wander(spread_hz: f64, floor_hz: Option<f64>) -> String {
-    let spread = unbroken(&deviation(spread_hz));
-    match floor_hz {
-        Some(floor) if spread_hz <= floor => {
-            format!("too little to tell from the noise of the measurement ({})", noise_alone(floor))
-        }
-        Some(floor) => format!("{spread} for 95\u{a0}% of the time ({})", noise_alone(floor)),
-        None => format!("{spread} for 95\u{a0}% of the time"),
-    }
 }
 
 #[derive(Serialize)]
@@ -685,15 +673,6 @@ mod tests {
         assert_eq!(turned(2.0).as_deref(), Some("turned up by 6.0\u{a0}dB"));
         assert_eq!(turned(0.1).as_deref(), Some("turned down by 20.0\u{a0}dB"));
         assert_eq!(turned(1.001), None);
-    }
-
-    #[test]
-    fn wander_below_the_noise_is_not_given_as_a_figure() {
-        assert_eq!(
-            wander(0.001, Some(0.002)),
-            "too little to tell from the noise of the measurement (noise alone would show ± 0.0020 Hz)"
-        );
-        assert!(wander(0.026, Some(6.8e-6)).starts_with("±\u{a0}0.026\u{a0}Hz for 95"));
     }
 
     #[test]

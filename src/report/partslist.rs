@@ -74,7 +74,7 @@ pub fn parts_csv(plan: &Plan) -> String {
             format!("{:e}", part.value_si),
             unit(part.kind).to_owned(),
             format!("{}", part.tolerance_pct),
-            part.setting_ohm.map_or(String::new(), |ohm| format!("{ohm}")),
+            part.setting_ohm.map_or(String::new(), |ohm| format!("{ohm:.1}")),
             part.material.clone().unwrap_or_default(),
             part.number.clone().unwrap_or_default(),
             remarks(part).join("; "),

@@ -100,7 +100,12 @@ fn measured_reduction(residual: &Residual, target_db: f64) -> Judged {
     if residual.at_noise_floor {
         return Judged {
             figure: format!("at least {}, what is left is in the noise", decibel(residual.reduction_db)),
-            standing: if reached { Standing::Met } else { Standing::Open },
+            standing: match (reached, residual.predicted_db >= target_db) {
+                (true, _) => Standing::Met,
+                (false, true) => Standing::Open,
+                // The recording cannot tell, but the response can.
+                (false, false) => Standing::Missed,
+            },
         };
     }
     Judged { figure: decibel(residual.reduction_db), standing: Standing::of(reached) }
@@ -288,6 +293,8 @@ mod tests {
         };
         assert_eq!(measured_reduction(&residual, 40.0).standing, Standing::Open);
         assert_eq!(measured_reduction(&residual, 25.0).standing, Standing::Met);
+        let hopeless = Residual { predicted_db: 35.0, ..residual.clone() };
+        assert_eq!(measured_reduction(&hopeless, 40.0).standing, Standing::Missed);
         let clear = Residual { at_noise_floor: false, ..residual };
         assert_eq!(measured_reduction(&clear, 40.0).standing, Standing::Missed);
     }

@@ -187,10 +187,31 @@ pub(super) fn counted(count: usize, one: &str, many: &str) -> String {
     format!("{count} {}", if count == 1 { one } else { many })
 }
 
+/// How far the frequency wanders, and how much of that could be noise.
+pub fn wander(spread_hz: f64, floor_hz: Option<f64>) -> String {
+    let spread = deviation(spread_hz);
+    match floor_hz {
+        Some(floor) if spread_hz <= floor => {
+            format!("too little to tell from the noise of the measurement ({})", noise_alone(floor))
+        }
+        Some(floor) => format!("{spread} for 95 % of the time ({})", noise_alone(floor)),
+        None => format!("{spread} for 95 % of the time"),
+    }
+}
+
 #[cfg(test)]
 mod tests {
     use super::*;
     use proptest::prelude::*;
+
+    #[test]
+    fn wander_below_the_noise_is_not_given_as_a_figure() {
+        assert_eq!(
+            wander(0.001, Some(0.002)),
+            "too little to tell from the noise of the measurement (noise alone would show ± 0.0020 Hz)"
+        );
+        assert!(wander(0.026, Some(6.8e-6)).starts_with("± 0.026 Hz for 95"));
+    }
 
     #[test]
     fn values_carry_the_prefix_that_keeps_them_between_one_and_a_thousand() {

@@ -223,7 +223,12 @@ impl Job<'_> {
             .zip(&after.orders)
             .map(|(residual, level)| Judged { residual, after_se_db: level.level_se_db })
             .collect();
-        let misses = misses(&judged, &keep);
+        let mut misses = misses(&judged, &keep);
+        if self.track.is_none() {
+            misses.push(
+                "no mains hum was found in this recording: what the filter leaves cannot be told".to_owned(),
+            );
+        }
         let delays: Vec<(f64, f64)> = self
             .brief
             .keep
@@ -368,9 +373,6 @@ impl Job<'_> {
             "the samples are true to the network over {} (to 0.45 of the sample rate), and near it above",
             span(0.0, EXACT_UP_TO * rate_hz)
         ));
-        if self.track.is_none() {
-            notes.push("no hum was found in this recording: no residual can be measured".to_owned());
-        }
         for residual in residuals.iter().filter(|residual| residual.at_noise_floor) {
             let Residual { order, after_dbfs, .. } = residual;
             notes.push(format!(

@@ -29,10 +29,11 @@ impl Kind for HighPass {
             drafts.push(bench.draft(self, setting, stages));
         }
         for (index, coil) in usable_coils(coils, corner_hz) {
-            let farad = 2.0 / (omega * omega * coil.inductance_h);
-            if !setting.may_have_capacitance(farad) {
+            let Some(farad) =
+                setting.corner_capacitance_f(2.0, coil.inductance_h, corner_hz, between_above_hz(setting))
+            else {
                 continue;
-            }
+            };
             let mut bench = Bench::default();
             let stages = vec![
                 series(bench.capacitor(setting.free_capacitance(farad))),
@@ -47,6 +48,12 @@ impl Kind for HighPass {
     fn notches(&self, _values: &[SlotValue], _source_ohm: f64, _load_ohm: f64) -> Vec<Notch> {
         Vec::new()
     }
+}
+
+/// Where a corner may lie: from the highest line to the lowest kept frequency.
+pub(super) fn between_above_hz(setting: &Setting) -> (f64, f64) {
+    let highest_hz = setting.lines.last().map_or(0.0, |line| line.frequency_hz);
+    (highest_hz, setting.kept_above_hz.unwrap_or(f64::INFINITY))
 }
 
 /// A corner between the highest line and the keep bands, where all of them lie above.

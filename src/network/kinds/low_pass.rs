@@ -35,10 +35,11 @@ impl Kind for LowPass {
         for (index, coil) in usable_coils(coils, setting.lowest().frequency_hz) {
             // Impedance level at which the coil's reactance is that of a
             // maximally flat C–L–C (1, 2, 1) at the corner.
-            let farad = 2.0 / (omega * omega * coil.inductance_h);
-            if !setting.may_have_capacitance(farad) {
+            let between_hz = (setting.kept_below_hz.unwrap_or(0.0), setting.lowest().frequency_hz);
+            let Some(farad) = setting.corner_capacitance_f(2.0, coil.inductance_h, corner_hz, between_hz)
+            else {
                 continue;
-            }
+            };
             for with_resistor in [false, true] {
                 let mut bench = Bench::default();
                 let mut stages = Vec::new();

@@ -110,6 +110,22 @@ impl Setting {
         (self.capacitance_f.0..=self.capacitance_f.1).contains(&farad)
     }
 
+    /// C = `factor`/(ω²L) for a corner of L and C at `corner_hz`, or the nearest
+    /// capacitance that can be made, where the corner then lies within `between_hz`:
+    /// it is where a search starts, and must not be given up for lying off the list.
+    fn corner_capacitance_f(
+        &self,
+        factor: f64,
+        inductance_h: f64,
+        corner_hz: f64,
+        between_hz: (f64, f64),
+    ) -> Option<f64> {
+        let wanted_f = factor / ((TAU * corner_hz).powi(2) * inductance_h);
+        let farad = wanted_f.max(self.capacitance_f.0).min(self.capacitance_f.1);
+        let moved_hz = corner_hz * (wanted_f / farad).sqrt();
+        (between_hz.0..=between_hz.1).contains(&moved_hz).then_some(farad)
+    }
+
     /// A capacitance left to the search, starting here.
     fn free_capacitance(&self, farad: f64) -> Freedom {
         Freedom::within(farad, self.capacitance_f)

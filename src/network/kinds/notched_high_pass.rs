@@ -2,7 +2,7 @@
 
 use std::f64::consts::TAU;
 
-use super::high_pass::corner_above_hz;
+use super::high_pass::{between_above_hz, corner_above_hz};
 use super::{
     Bench, Draft, Kind, NaturalTrim, Notch, Setting, SlotValue, resonance_hz, resonant_capacitance_f, series,
     shunt, usable_coils,
@@ -23,14 +23,12 @@ impl Kind for NotchedHighPass {
         let (Some(corner_hz), Some(line)) = (corner_above_hz(setting), setting.lines.last()) else {
             return Vec::new();
         };
-        let omega = TAU * corner_hz;
+        let between_hz = between_above_hz(setting);
         let mut drafts = Vec::new();
         for (index, coil) in usable_coils(coils, corner_hz) {
             let trap_f = resonant_capacitance_f(coil.inductance_h, line.frequency_hz);
-            let series_f = 1.5 / (omega * omega * coil.inductance_h);
-            if !setting.may_have_capacitance(trap_f) || !setting.may_have_capacitance(series_f) {
-                continue;
-            }
+            let series_f = setting.corner_capacitance_f(1.5, coil.inductance_h, corner_hz, between_hz);
+            let Some(series_f) = series_f.filter(|_| setting.may_have_capacitance(trap_f)) else { continue };
             let mut bench = Bench::default();
             let first = series(bench.capacitor(setting.free_capacitance(series_f)));
             let trap =

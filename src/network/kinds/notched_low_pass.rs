@@ -26,14 +26,13 @@ impl Kind for NotchedLowPass {
             return Vec::new();
         }
         let line = setting.lowest();
-        let omega = TAU * corner_below_hz(setting);
+        let between_hz = (setting.kept_below_hz.unwrap_or(0.0), line.frequency_hz);
         let mut drafts = Vec::new();
         for (index, coil) in usable_coils(coils, line.frequency_hz) {
             let tank_f = resonant_capacitance_f(coil.inductance_h, line.frequency_hz);
-            let shunt_f = 1.5 / (omega * omega * coil.inductance_h);
-            if !setting.may_have_capacitance(tank_f) || !setting.may_have_capacitance(shunt_f) {
-                continue;
-            }
+            let corner_hz = corner_below_hz(setting);
+            let shunt_f = setting.corner_capacitance_f(1.5, coil.inductance_h, corner_hz, between_hz);
+            let Some(shunt_f) = shunt_f.filter(|_| setting.may_have_capacitance(tank_f)) else { continue };
             for (before, across) in [(false, false), (true, false), (false, true)] {
                 let mut bench = Bench::default();
                 let mut stages = Vec::new();
