@@ -284,6 +284,25 @@ fn two_captures_of_one_line_give_one_account() {
 }
 
 #[test]
+fn captures_of_different_supplies_are_not_merged() {
+    let capture = |name: &str, frequency_hz: f64, seed: u64| {
+        let samples = with_noise(steady(frequency_hz, &[(1, 0.1), (3, 0.02)], 1000, 20.0), 0.005, seed);
+        MemoryCapture::new(name, 1000, vec![samples])
+    };
+    let (mut voice, mut geo) = (capture("voice", 60.0, 22), capture("geo", 50.0, 23));
+    let mut again = capture("geo again", 50.1, 24);
+    let analysis = analyse(&mut [&mut voice, &mut geo, &mut again], &AnalyseOptions::default(), &mut |_| {})
+        .expect("read")
+        .analysis;
+    assert_eq!(analysis.mains.nominal_hz, Some(50.0));
+    assert!((analysis.mains.frequency_hz.expect("found") - 50.05).abs() < 1e-3, "{:?}", analysis.mains);
+    let left_out =
+        |note: &String| note.starts_with("voice: ") && note.contains("60.00") && note.contains("left out");
+    assert!(analysis.notes.iter().any(left_out), "{:?}", analysis.notes);
+    assert!(analysis.harmonics.iter().all(|line| (line.frequency_hz / 50.05).fract() < 1e-3), "{analysis:?}");
+}
+
+#[test]
 fn a_second_supply_is_told_apart() {
     let mut samples = with_noise(steady(50.0, &[(1, 0.1), (3, 0.03)], 2000, 20.0), 2e-3, 30);
     let railway = steady(16.68, &[(1, 0.02)], 2000, 20.0);

@@ -4,6 +4,7 @@
 //! takes phasors of all harmonics of the best comb and tracks their common phase.
 //! Pass 3 measures the levels along that track, and other supplies.
 
+use super::agreement::{Reading, of_one_supply};
 use super::causes::likely_causes;
 use super::comb::{Candidate, candidates, candidates_besides};
 use super::findings::{Analysis, CaptureSummary, Harmonic, Mains, OtherSupply, TrackPoint};
@@ -57,9 +58,10 @@ pub struct AnalysisRun {
 
 /// Analyses one capture, or several captures of one line.
 ///
-/// Several captures are merged into one mean and spread; harmonics, track and
-/// phase are those of the first in which hum is found, levels the mean power of
-/// all. `progress` is called with the share done, 0 to 1.
+/// Several captures of one supply are merged into one mean and spread; harmonics,
+/// track and phase are those of the first in which its hum is found, levels the mean
+/// power of all. A capture that hums at another supply's frequency is left out, and a
+/// note says so. `progress` is called with the share done, 0 to 1.
 ///
 /// # Errors
 /// [`AnalysisError`] when there is no capture, the channel asked for is not
@@ -88,7 +90,11 @@ struct One {
     spectrum: Spectrum,
     /// The survey's best guess was too weak, or its verdict says no.
     confidence: f64,
+    /// Nats that the verdict gave.
+    evidence: f64,
     hum: Option<Hum>,
+    /// Frequency of its hum, where that is another supply's than the account's.
+    left_out_hz: Option<f64>,
     notes: Vec<String>,
 }
 
@@ -148,7 +154,9 @@ fn analyse_one(
         },
         spectrum: Spectrum::default(),
         confidence: 0.0,
+        evidence: 0.0,
         hum: None,
+        left_out_hz: None,
         notes: capture_notes(
             &survey,
             rate_hz,
@@ -169,6 +177,7 @@ fn analyse_one(
     let seen = second_pass(capture, channel, best, &survey, &mut |p| progress((1.0 + p) / 3.0))?;
     one.spectrum = seen.spectrum;
     one.confidence = seen.verdict.as_ref().map_or(0.0, |verdict| verdict.confidence);
+    one.evidence = seen.verdict.as_ref().map_or(0.0, |verdict| verdict.evidence);
     let (Some(verdict), Some(tracked)) = (seen.verdict, seen.tracked) else { return Ok(one) };
     if !verdict.found {
         progress(1.0);
@@ -509,8 +518,33 @@ fn capture_notes(
     notes
 }
 
+/// Takes the hum out of captures of another supply than most are of.
+fn leave_out_other_supplies(done: &mut [One]) {
+    let humming: Vec<&mut One> = done.iter_mut().filter(|one| one.hum.is_some()).collect();
+    let reading = |one: &&mut One| Reading {
+        frequency_hz: one.hum.as_ref().map_or(0.0, |hum| hum.frequency_hz),
+        evidence: one.evidence,
+    };
+    let kept = of_one_supply(&humming.iter().map(reading).collect::<Vec<_>>());
+    for (one, _) in humming.into_iter().zip(kept).filter(|(_, kept)| !kept) {
+        one.left_out_hz = one.hum.take().map(|hum| hum.frequency_hz);
+    }
+}
+
+/// Why a capture does not count in an account of several.
+fn left_out_note(one: &One) -> String {
+    let path = &one.summary.path;
+    match one.left_out_hz {
+        Some(hertz) => format!(
+            "{path}: hums at {hertz:.3} Hz, which is another supply; it was left out of this account: analyse it alone"
+        ),
+        None => format!("{path}: no hum found; it does not count"),
+    }
+}
+
 /// One account of all captures.
 fn merged(mut done: Vec<One>) -> AnalysisRun {
+    leave_out_other_supplies(&mut done);
     let base = done.iter().position(|one| one.hum.is_some());
     let several = done.len() > 1;
     let mut notes = Vec::new();
@@ -520,7 +554,7 @@ fn merged(mut done: Vec<One>) -> AnalysisRun {
             own.map(|note| if several { format!("{}: {note}", one.summary.path) } else { note.clone() }),
         );
         if several && one.hum.is_none() && base.is_some() {
-            notes.push(format!("{}: no hum found; it does not count", one.summary.path));
+            notes.push(left_out_note(one));
         }
     }
     let captures: Vec<CaptureSummary> = done.iter().map(|one| one.summary.clone()).collect();

@@ -1,5 +1,6 @@
 //! What hums: fundamental, harmonics, frequency track, spread, supplies, cause.
 
+mod agreement;
 mod analyse;
 mod causes;
 mod coherent;
