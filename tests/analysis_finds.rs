@@ -316,6 +316,33 @@ fn a_second_supply_is_told_apart() {
 }
 
 #[test]
+fn of_two_steady_supplies_the_stronger_is_the_main_one() {
+    // Fundamentals alone, and combs that meet at 300 Hz.
+    let alone: &[(u32, f64)] = &[(1, 1.0)];
+    let comb: &[(u32, f64)] = &[(1, 1.0), (3, 0.3), (5, 0.2), (6, 0.1)];
+    for (rate, lines) in [(400, alone), (RATE, comb)] {
+        for (strong_hz, weak_hz) in [(50.0, 60.0), (60.0, 50.0)] {
+            let of = |hz: f64, gain: f64| {
+                let lines: Vec<(u32, f64)> = lines.iter().map(|(k, a)| (*k, a * gain)).collect();
+                steady(hz, &lines, rate, 60.0)
+            };
+            let (strong, weak) = (of(strong_hz, 0.1), of(weak_hz, 0.05));
+            let both = strong.iter().zip(&weak).map(|(a, b)| a + b).collect();
+            let analysis = run(rate, vec![with_noise(both, 1e-4, 76)]).analysis;
+            let mains = &analysis.mains;
+            assert_eq!(mains.nominal_hz, Some(strong_hz), "{mains:?}");
+            let error_hz = (mains.frequency_hz.expect("found") - strong_hz).abs();
+            let stated_hz = mains.frequency_se_hz.expect("found");
+            assert!(error_hz < 4.0 * stated_hz && stated_hz < 2e-5, "{error_hz} ± {stated_hz}");
+            let other = analysis.other_supplies.first().unwrap_or_else(|| panic!("{mains:?}"));
+            assert_eq!(other.nominal_hz, weak_hz);
+            assert!((other.frequency_hz - weak_hz).abs() < 2e-5, "{other:?}");
+            assert!((other.level_dbfs + 26.02).abs() < 0.1, "{other:?}");
+        }
+    }
+}
+
+#[test]
 fn a_struck_bass_note_beside_a_60_hz_comb_is_no_second_supply() {
     // B1 lies within an island's range of 60 Hz; with rests, and legato.
     for (every_s, length_s) in [(1.0, 0.7), (0.5, 0.45), (2.0, 1.6), (0.5, 0.5)] {

@@ -7,6 +7,7 @@
 use super::agreement::{Reading, of_one_supply};
 use super::causes::likely_causes;
 use super::comb::{Candidate, candidates, candidates_besides};
+use super::company::{APART_HOP_S, are_shared, usual_beside};
 use super::findings::{Analysis, CaptureSummary, Harmonic, Mains, OtherSupply, TrackPoint};
 use super::folding::{folded_harmonics, hidden_supplies, is_half_rate};
 use super::gather::{Gather, Gathered};
@@ -165,7 +166,7 @@ fn analyse_one(
             channel,
         ),
     };
-    let best = if duration_s >= SHORTEST_S { likeliest(&survey, found) } else { None };
+    let best = if duration_s >= SHORTEST_S { likeliest(&survey, found, rate_hz) } else { None };
     let Some(best) = &best else {
         let mut spectrum = SpectrumMeter::new(rate_hz, duration_s);
         read_channel(capture, channel, &mut |samples| spectrum.push(samples), &mut |p| {
@@ -184,7 +185,22 @@ fn analyse_one(
         return Ok(one);
     }
     let besides = candidates_besides(&survey, rate_hz, best);
-    let mut hum = third_pass(capture, channel, &seen.reference, &tracked, &verdict, &besides, &mut |p| {
+    let mut reference = seen.reference;
+    let mut tracked = tracked;
+    let main_hz = mean_frequency_hz(&reference, &tracked, duration_s);
+    if let Some(other) = usual_beside(&besides, main_hz).next() {
+        // A first track that the other shakes is no reference: its mean is, or the survey's path.
+        let first = if reference.is_constant() {
+            PhaseTrack::constant(main_hz, duration_s)
+        } else {
+            reference.clone()
+        };
+        if let Some(apart) = tracked_apart(capture, channel, &first, &verdict, other.mean_hz())? {
+            tracked = Tracked { lines: tracked.lines, ..apart };
+            reference = first;
+        }
+    }
+    let mut hum = third_pass(capture, channel, &reference, &tracked, &verdict, &besides, &mut |p| {
         progress((2.0 + p) / 3.0);
     })?;
     if let Some(other_hz) = verdict.ambiguous {
@@ -309,6 +325,35 @@ fn second_pass(
     Ok(Second { reference, spectrum: spectrum.finish(), tracked, verdict })
 }
 
+/// The offset from a first reference by the orders that another supply does not have, in blocks
+/// so long that its lines do not shake it.
+fn tracked_apart(
+    capture: &mut dyn Capture,
+    channel: usize,
+    first: &PhaseTrack,
+    verdict: &Verdict,
+    other_hz: f64,
+) -> Result<Option<Tracked>, AnalysisError> {
+    let format = capture.format().clone();
+    let (rate_hz, duration_s) = (f64::from(format.sample_rate_hz), format.duration_s());
+    let main_hz = first.mean_frequency_hz();
+    let own: Vec<u32> = orders_below_top(main_hz, rate_hz)
+        .into_iter()
+        .filter(|&k| !are_shared(f64::from(k) * main_hz, other_hz))
+        .collect();
+    let mut clear: Vec<u32> = verdict.lasting.iter().copied().filter(|k| own.contains(k)).collect();
+    // Longer cells reach less far: by the lowest orders farthest.
+    if clear.iter().any(|&k| k <= 3) {
+        clear.retain(|&k| k <= 3);
+    }
+    if clear.is_empty() || duration_s < 40.0 * APART_HOP_S {
+        return Ok(None);
+    }
+    let mut gather = Gather::in_blocks(APART_HOP_S, rate_hz, first, &own, format.frames);
+    read_channel(capture, channel, &mut |samples| gather.push(samples), &mut |_| {})?;
+    Ok(track(&gather.finish().cells, &clear, 1.0 / APART_HOP_S, duration_s))
+}
+
 /// Up to where harmonics are looked for at a sample rate.
 pub(super) fn top_hz(rate_hz: f64) -> f64 {
     TOP_HZ.min(TOP_SHARE * rate_hz)
@@ -384,7 +429,13 @@ fn third_pass(
             let steady = PhaseTrack::constant(candidate.mean_hz(), duration_s);
             let mut orders = candidate.orders.clone();
             orders.truncate(4);
-            (candidate, Gather::new(rate_hz, &steady, &orders, format.frames))
+            let apart = usual_beside(std::slice::from_ref(candidate), frequency_hz).next().is_some();
+            let gather = if apart && duration_s >= 40.0 * APART_HOP_S {
+                Gather::in_blocks(APART_HOP_S, rate_hz, &steady, &orders, format.frames)
+            } else {
+                Gather::new(rate_hz, &steady, &orders, format.frames)
+            };
+            (candidate, gather)
         })
         .collect();
     read_channel(

@@ -28,12 +28,13 @@ pub(super) struct Gathered {
 impl Gather {
     pub fn new(rate_hz: f64, reference: &PhaseTrack, orders: &[u32], frames: u64) -> Self {
         let duration_s = frames as f64 / rate_hz;
-        let bank = PhasorBank::new(
-            rate_hz,
-            reference,
-            orders,
-            block_hop_s(reference.mean_frequency_hz(), duration_s),
-        );
+        let hop_s = block_hop_s(reference.mean_frequency_hz(), duration_s);
+        Self::in_blocks(hop_s, rate_hz, reference, orders, frames)
+    }
+
+    /// As [`Gather::new`], with so many seconds from block to block.
+    pub fn in_blocks(hop_s: f64, rate_hz: f64, reference: &PhaseTrack, orders: &[u32], frames: u64) -> Self {
+        let bank = PhasorBank::new(rate_hz, reference, orders, hop_s);
         let blocks = bank.blocks_in(frames);
         // Six blocks are nearly independent of the next six; a short capture
         // needs some twenty cells the more.

@@ -3,7 +3,8 @@
 
 use super::analyse::{SILENT, TOP_SHARE};
 use super::coherent::{Faint, faint_combs};
-use super::comb::Candidate;
+use super::comb::{Candidate, candidates_besides};
+use super::company::{are_shared, usual_beside};
 use super::gather::{Gather, Gathered};
 use super::reference::{mean_frequency_hz, motion, reference_track};
 use super::supplies::is_usual;
@@ -18,7 +19,7 @@ const WORTH_A_LOOK: f64 = 3.0;
 const CERTAIN: f64 = 25.0;
 
 /// The candidate whose lines, followed through the opening, say most.
-pub(super) fn likeliest(survey: &Surveyed, found: Vec<Candidate>) -> Option<Candidate> {
+pub(super) fn likeliest(survey: &Surveyed, found: Vec<Candidate>, rate_hz: f64) -> Option<Candidate> {
     if survey.rms <= SILENT {
         return None;
     }
@@ -35,6 +36,12 @@ pub(super) fn likeliest(survey: &Surveyed, found: Vec<Candidate>) -> Option<Cand
         });
         tried.extend(followed(survey, faint.collect()));
     }
+    // The survey gives one comb of all public supplies; there may be two.
+    let usual = |trial: &Trial| is_public(trial) && is_usual(trial.frequency_hz);
+    if let Some(first) = tried.iter().find(|trial| usual(trial)) {
+        let besides = candidates_besides(survey, rate_hz, &first.candidate);
+        tried.extend(followed(survey, usual_beside(&besides, first.frequency_hz).cloned().collect()));
+    }
     tried.sort_by(|a, b| b.verdict.evidence.total_cmp(&a.verdict.evidence));
     let own_power = |trial: &Trial| -> f64 {
         // Every third line of a railway's comb may be a public supply's.
@@ -44,7 +51,6 @@ pub(super) fn likeliest(survey: &Surveyed, found: Vec<Candidate>) -> Option<Cand
     let found = |trial: &Trial| trial.verdict.found;
     let first = tried.iter().position(found).unwrap_or(0);
     // A supply in its usual range before one that strays as far as a note may lie.
-    let usual = |trial: &Trial| is_public(trial) && is_usual(trial.frequency_hz);
     let chosen = match tried.iter().position(usual).or_else(|| tried.iter().position(is_public)) {
         Some(i) if is_public(&tried[first]) => i,
         // One line at 420 Hz may be a public supply's seventh.
@@ -52,6 +58,10 @@ pub(super) fn likeliest(survey: &Surveyed, found: Vec<Candidate>) -> Option<Cand
         Some(i) if tried[first].frequency_hz < 20.0 && own_power(&tried[i]) > own_power(&tried[first]) => i,
         _ => first,
     };
+    // Of two supplies in their usual range, the stronger.
+    let stronger = |trial: &Trial| usual(trial) && trial.is_stronger_than(&tried[chosen]);
+    let two = tried.get(chosen).is_some_and(usual);
+    let chosen = if two { tried.iter().position(stronger).unwrap_or(chosen) } else { chosen };
     // Of two accounts of one comb, the survey's own: the other was picked for its evidence.
     let surveyed = |trial: &Trial| {
         let apart = trial.frequency_hz / tried[chosen].frequency_hz - 1.0;
@@ -103,6 +113,18 @@ impl Trial {
         );
         let lines = verdict.lasting.iter().map(|&k| (k, tracked.lines[k as usize - 1].power)).collect();
         Some(Self { candidate, frequency_hz, verdict, lines })
+    }
+
+    /// Whether another supply's own lines carry more power than this one's.
+    fn is_stronger_than(&self, other: &Self) -> bool {
+        let apart = (self.frequency_hz / other.frequency_hz - 1.0).abs();
+        apart > 0.1 && self.power_without(other.frequency_hz) > other.power_without(self.frequency_hz)
+    }
+
+    /// Power of the lines that are on no line of another comb.
+    fn power_without(&self, other_hz: f64) -> f64 {
+        let own = self.lines.iter().filter(|(k, _)| !are_shared(f64::from(*k) * self.frequency_hz, other_hz));
+        own.map(|(_, power)| power).sum()
     }
 }
 

@@ -5,6 +5,7 @@ mod analyse;
 mod causes;
 mod coherent;
 mod comb;
+mod company;
 mod decimator;
 mod findings;
 mod folding;

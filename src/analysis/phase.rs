@@ -25,6 +25,11 @@ impl PhaseTrack {
         }
     }
 
+    /// Whether the frequency is the same all along.
+    pub(super) fn is_constant(&self) -> bool {
+        self.frequency_hz.iter().all(|hertz| *hertz == self.frequency_hz[0])
+    }
+
     /// φ(t) by the cubic that keeps phase and frequency at both knots
     /// (Hermite); straight on at the end's frequency outside the knots.
     pub fn phase_at(&self, time_s: f64) -> f64 {
