@@ -3,15 +3,21 @@
 use super::findings::FoldedHarmonic;
 use super::supplies::{SUPPLIES, Supply};
 
-/// Highest order listed.
+/// Highest order listed at least.
 const ORDERS: u32 = 15;
+/// Highest order listed where it is the one that folds onto 0 Hz.
+const SLOWEST_FOLD: u32 = 40;
 
-/// Every harmonic up to the 15th that the sample rate folds.
+/// Every harmonic up to the 15th that the sample rate folds or that lies at half of
+/// it; up to the one that folds onto 0 Hz where that is not much higher.
 pub(super) fn folded_harmonics(fundamental_hz: f64, sample_rate_hz: f64) -> Vec<FoldedHarmonic> {
     let half = 0.5 * sample_rate_hz;
-    (1..=ORDERS)
+    let onto_zero = (sample_rate_hz / fundamental_hz).round() as u32;
+    let last = if onto_zero <= SLOWEST_FOLD { ORDERS.max(onto_zero) } else { ORDERS };
+    (1..=last)
         .filter(|&k| {
-            f64::from(k) * fundamental_hz > half || (k == 1 && is_half_rate(fundamental_hz, sample_rate_hz))
+            let frequency_hz = f64::from(k) * fundamental_hz;
+            frequency_hz > half || is_half_rate(frequency_hz, sample_rate_hz)
         })
         .map(|order| {
             let frequency_hz = f64::from(order) * fundamental_hz;
@@ -22,9 +28,9 @@ pub(super) fn folded_harmonics(fundamental_hz: f64, sample_rate_hz: f64) -> Vec<
         .collect()
 }
 
-/// Whether the fundamental is half the sample rate, as near as matters.
-pub(super) fn is_half_rate(fundamental_hz: f64, sample_rate_hz: f64) -> bool {
-    (fundamental_hz - 0.5 * sample_rate_hz).abs() < 0.01 * fundamental_hz
+/// Whether a frequency is half the sample rate, as near as matters: a public grid's 1 %.
+pub(super) fn is_half_rate(frequency_hz: f64, sample_rate_hz: f64) -> bool {
+    (frequency_hz - 0.5 * sample_rate_hz).abs() < 0.01 * frequency_hz
 }
 
 /// What a sample rate hides of the public supplies, whatever is found.
@@ -58,7 +64,7 @@ pub(super) fn appears_at(frequency_hz: f64, sample_rate_hz: f64) -> f64 {
 }
 
 fn remark(order: u32, appears_at_hz: f64, fundamental_hz: f64, sample_rate_hz: f64) -> String {
-    if order == 1 {
+    if is_half_rate(f64::from(order) * fundamental_hz, sample_rate_hz) {
         return format!(
             "half the sample rate: f and {sample_rate_hz} Hz − f cannot be told apart, and the level beats with the phase"
         );
@@ -96,6 +102,14 @@ mod tests {
         let folded = folded_harmonics(49.98, 100.0);
         assert_eq!(folded[0].order, 1);
         assert!(folded[0].remark.contains("cannot be told apart"));
+    }
+
+    #[test]
+    fn a_harmonic_at_half_the_rate_and_the_one_that_folds_onto_0_hz_are_told() {
+        let folded = folded_harmonics(49.988, 800.0);
+        let remark = |order| &folded.iter().find(|f| f.order == order).expect("listed").remark;
+        assert!(remark(8).starts_with("half the sample rate"), "{}", remark(8));
+        assert!(remark(16).starts_with("folds onto 0 Hz"), "{}", remark(16));
     }
 
     #[test]
