@@ -303,6 +303,23 @@ fn captures_of_different_supplies_are_not_merged() {
 }
 
 #[test]
+fn no_cycle_is_lost_in_a_gap() {
+    for (seed, middle_hz, swing_hz) in
+        [(77, 50.0, 0.0), (78, 49.93, 0.0), (79, 60.03, 0.02), (80, 50.02, 0.02)]
+    {
+        let track = analysis_signals::phase_of_wander(middle_hz, swing_hz, 0.03, 60.0);
+        let mut samples = hum(&track, &[(1, 0.1)], &[0.5], 400, 60.0);
+        samples[28 * 400..31 * 400].fill(0.0);
+        let mains = run(400, vec![with_noise(samples, 1e-4, seed)]).analysis.mains;
+        let error_hz = mains.frequency_hz.expect("found") - track.mean_frequency_hz();
+        let stated_hz = mains.frequency_se_hz.expect("found");
+        assert!(error_hz.abs() < 4.0 * stated_hz && stated_hz < 1e-4, "{middle_hz}: {error_hz} in {mains:?}");
+        let spread_hz = mains.spread_hz.expect("long");
+        assert!((spread_hz - swing_hz).abs() < 4e-3, "{middle_hz} ± {swing_hz}: {mains:?}");
+    }
+}
+
+#[test]
 fn a_second_supply_is_told_apart() {
     let mut samples = with_noise(steady(50.0, &[(1, 0.1), (3, 0.03)], 2000, 20.0), 2e-3, 30);
     let railway = steady(16.68, &[(1, 0.02)], 2000, 20.0);

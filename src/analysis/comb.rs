@@ -119,7 +119,12 @@ impl<'a> View<'a> {
 
     fn steadiest(&self, grid: &[f64]) -> Option<f64> {
         let scored = grid.iter().map(|&f| (f, self.steady_score(f) * prior(f)));
-        scored.max_by(|a, b| a.1.total_cmp(&b.1)).map(|(f, _)| f)
+        // A strong line counts alike as far as its lobe reaches: of equals the clearest.
+        let clearest = |f: f64| self.power_on_lines(f);
+        let better = |a: &(f64, f64), b: &(f64, f64)| {
+            a.1.total_cmp(&b.1).then_with(|| clearest(a.0).total_cmp(&clearest(b.0)))
+        };
+        scored.max_by(better).map(|(f, _)| f)
     }
 
     fn orders(&self, f: f64) -> impl Iterator<Item = (u32, f64)> + use<> {
@@ -131,6 +136,15 @@ impl<'a> View<'a> {
         self.orders(f)
             .map(|(k, line)| weight(k) * counted(interpolated(&self.standing, line / self.survey.bin_hz)))
             .sum()
+    }
+
+    /// Power on the lines that stand out: what neither the limit to a line's score nor that
+    /// to its ratio to the noise levels out.
+    fn power_on_lines(&self, f: f64) -> f64 {
+        let heard = self.orders(f).map(|(_, line)| line / self.survey.bin_hz);
+        let heard = heard.filter(|&at| counted(interpolated(&self.standing, at)) > 0.0);
+        let power = |at: f64| self.survey.powers.iter().map(|row| interpolated_f32(row, at)).sum::<f64>();
+        heard.map(power).sum()
     }
 
     /// Score and orders along a path of the fundamental.

@@ -21,6 +21,13 @@ const ROUNDS: usize = 7;
 const SIGNIFICANT: f64 = 8.0;
 /// What a window of its own must gain, in nats.
 const WINDOW_COST: f64 = 2.0;
+/// Power over the noise of a component from which one cell tells whether a line is there:
+/// a tenth of the amplitude is then three standard deviations.
+const CLEAR_IN_A_CELL: f64 = 900.0;
+/// Share of the mean amplitude under which the line is taken to be gone (20 dB).
+const GONE: f64 = 0.1;
+/// Variance of a phase that nothing is known of, in rad²: many turns.
+const UNKNOWN: f64 = 1e4;
 /// Phasors are limited in the search to so many times the typical one.
 const LARGEST: f64 = 2.5;
 /// Degrees of freedom of the weights where noise is heavy-tailed (Student's t).
@@ -197,16 +204,24 @@ fn measured_phases(cells: &Cells, phase: &[f64], phase_sd: f64, lead: usize, rob
         let (mean, variance, weights) = weighted_mean(&turned, cells, cells.variance(line), robust);
         for (b, z) in turned.iter().enumerate() {
             let weight = cells.share[b] * weights.as_ref().map_or(1.0, |w| w[b]) / variance;
-            pull[b] += weight * k * (mean.conj() * z).im;
-            information[b] += weight * k * k * mean.norm_sqr();
+            let there = share_there(*z, mean, variance);
+            pull[b] += weight * k * there * (mean.conj() * z).im;
+            information[b] += weight * k * k * there * there * mean.norm_sqr();
         }
     }
     let least = 1e-13;
     Phases {
         time_s: cells.time_s.clone(),
         phase_rad: (0..count).map(|b| phase[b] + pull[b] / information[b].max(1e-30)).collect(),
-        variance: information.iter().map(|i| (1.0 / i.max(1e-30)).max(least)).collect(),
+        variance: information.iter().map(|i| (1.0 / i.max(1e-30)).clamp(least, UNKNOWN)).collect(),
     }
+}
+
+/// Amplitude of a line in a cell over its mean one, where that tells that it is gone: a
+/// cell without the line says nothing of its phase. Elsewhere 1.
+fn share_there(z: Complex64, mean: Complex64, variance: f64) -> f64 {
+    let share = (z.norm_sqr() / mean.norm_sqr().max(1e-40)).sqrt();
+    if mean.norm_sqr() > CLEAR_IN_A_CELL * variance && share < GONE { share } else { 1.0 }
 }
 
 fn mean_of(values: impl Iterator<Item = Complex64>, cells: &Cells) -> Complex64 {
