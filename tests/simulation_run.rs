@@ -369,6 +369,23 @@ fn what_misses_the_brief_is_named_with_its_figures() {
 }
 
 #[test]
+fn of_orders_the_plan_never_saw_only_those_are_asked_for_that_stand_near_the_strongest() {
+    let circuit = traps(700.0);
+    let brief = LineBrief { orders: None, ..brief(&circuit) };
+    let mut samples = humming(2000, 10.0, 1e-6);
+    for (n, sample) in samples.iter_mut().enumerate() {
+        let phase = TAU * HUM_HZ * n as f64 / 2000.0;
+        // 29.5 and 9.5 dB below order 1; 20 dB is asked.
+        *sample += 0.01 * (5.0 * phase).cos() + 0.1 * (7.0 * phase).cos();
+    }
+    let mut capture = MemoryCapture::new("made", 2000, vec![samples]);
+    let options = SimulateOptions::default();
+    let got = outcome(&mut capture, circuit, &brief, &[1, 3, 5, 7], 1, &options).expect("simulated");
+    let asked = |order| got.run.simulation.residual.iter().find(|r| r.order == order).unwrap().target_db;
+    assert_eq!([1, 3, 5, 7].map(asked), [Some(20.0), Some(20.0), None, Some(20.0)]);
+}
+
+#[test]
 fn a_level_to_leave_is_held_against_what_is_left() {
     let circuit = traps(60.0);
     let mut brief = brief(&circuit);

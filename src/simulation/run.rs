@@ -262,16 +262,18 @@ impl Job<'_> {
 
     fn residuals(&self, before: &Readings, after: &Readings) -> Vec<Residual> {
         let pairs = before.orders.iter().zip(&after.orders);
-        pairs.map(|(before, after)| self.residual(before, after)).collect()
+        let strongest_dbfs =
+            before.orders.iter().map(|order| order.level_dbfs).fold(f64::NEG_INFINITY, f64::max);
+        pairs.map(|(before, after)| self.residual(before, after, strongest_dbfs)).collect()
     }
 
-    fn residual(&self, before: &OrderLevel, after: &OrderLevel) -> Residual {
+    fn residual(&self, before: &OrderLevel, after: &OrderLevel, strongest_dbfs: f64) -> Residual {
         let by_power = changes_more(after, before);
         let reading = |level: &OrderLevel| if by_power { level.mean_power_dbfs } else { level.level_dbfs };
         let at_noise_floor = after.over_floor_db < NOISE_FLOOR_DB && !by_power;
         let after_dbfs = if at_noise_floor { upper_bound_dbfs(after) } else { reading(after) };
         let before_dbfs = reading(before);
-        let asked = is_asked_for(before.order, self.brief, self.design);
+        let asked = is_asked_for(before.order, before_dbfs, strongest_dbfs, self.brief, self.design);
         Residual {
             order: before.order,
             frequency_hz: before.frequency_hz,

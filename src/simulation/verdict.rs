@@ -15,15 +15,25 @@ pub(super) struct Judged<'a> {
     pub after_se_db: f64,
 }
 
-/// Whether the brief asks for less of an order: those it lists; else those that
-/// the plan reduces, and any that the plan never saw.
-pub(super) fn is_asked_for(order: u32, brief: &LineBrief, design: &Design) -> bool {
+/// Whether the brief asks for less of an order that stands at `before_dbfs`: those it
+/// lists; else those that the plan reduces, and of any other those that are not already
+/// that far below the strongest, as the planner reads the brief.
+pub(super) fn is_asked_for(
+    order: u32,
+    before_dbfs: f64,
+    strongest_dbfs: f64,
+    brief: &LineBrief,
+    design: &Design,
+) -> bool {
     if let Some(orders) = &brief.orders {
         return orders.contains(&order);
     }
     match design.predicted.iter().find(|predicted| predicted.order == order) {
         Some(predicted) => predicted.target_db.is_some() || leave_dbfs(brief).is_some(),
-        None => true,
+        None => match brief.target {
+            ReductionTarget::ReduceByDb(db) => before_dbfs > strongest_dbfs - db,
+            _ => true,
+        },
     }
 }
 
