@@ -3,8 +3,8 @@
 //! Common practice, as a table: a pattern is a function from the measured levels
 //! to a weight and its evidence, or to nothing. To add a cause, add a row.
 
-use super::analyse::top_hz;
 use super::findings::{Cause, Harmonic};
+use super::passes::top_hz;
 
 /// One row: what it is, what to try first, and what tells it.
 struct Pattern {

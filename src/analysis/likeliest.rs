@@ -1,11 +1,12 @@
 //! Which comb to follow: each candidate is followed through the opening of the
 //! capture, and the one is taken whose lines say most and are most likely a supply's.
 
-use super::analyse::{SILENT, TOP_SHARE};
+use super::analyse::SILENT;
 use super::coherent::{Faint, faint_combs};
 use super::comb::{Candidate, candidates_besides};
 use super::company::{are_shared, usual_beside};
 use super::gather::{Gather, Gathered};
+use super::passes::TOP_SHARE;
 use super::reference::{mean_frequency_hz, motion, reference_track};
 use super::supplies::is_usual;
 use super::survey::{SURVEY_TOP_HZ, Surveyed};

@@ -1,7 +1,9 @@
 //! What hums: fundamental, harmonics, frequency track, spread, supplies, cause.
 
+mod account;
 mod agreement;
 mod analyse;
+mod besides;
 mod causes;
 mod coherent;
 mod comb;
@@ -14,6 +16,7 @@ mod kalman;
 mod likeliest;
 mod neighbours;
 mod orders;
+mod passes;
 mod phase;
 mod phasors;
 mod presence;
