@@ -20,6 +20,7 @@ mod passes;
 mod phase;
 mod phasors;
 mod presence;
+mod reading;
 mod reference;
 mod spectrum;
 mod spread;

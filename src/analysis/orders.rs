@@ -4,7 +4,9 @@ use super::PhaseTrack;
 use super::phasors::{BlockPhasors, PhasorBank, block_response, wrapped_degrees};
 use super::window::BLACKMAN_HARRIS;
 use num_complex::Complex64;
+use rustfft::{Fft, FftPlanner};
 use std::f64::consts::TAU;
+use std::sync::Arc;
 
 /// Blocks in one stretch of the noise measurement.
 const STRETCH_BLOCKS: usize = 128;
@@ -184,6 +186,8 @@ pub(super) struct NoiseBeside {
     /// Squared amplitude of each line itself, summed over the stretches.
     line_power: Vec<f64>,
     stretches: usize,
+    fft: Arc<dyn Fft<f64>>,
+    scratch: Vec<Complex64>,
 }
 
 impl NoiseBeside {
@@ -197,6 +201,7 @@ impl NoiseBeside {
         let bins: Vec<i32> = (-outer..=outer).filter(|m| m.abs() >= inner).collect();
         let power = vec![vec![0.0; bins.len()]; lines];
         let gathered = vec![Vec::with_capacity(stretch); lines];
+        let fft = FftPlanner::new().plan_fft_forward(stretch);
         Self {
             stretch,
             window,
@@ -207,6 +212,8 @@ impl NoiseBeside {
             power,
             line_power: vec![0.0; lines],
             stretches: 0,
+            scratch: vec![Complex64::ZERO; fft.get_inplace_scratch_len()],
+            fft,
         }
     }
 
@@ -221,22 +228,14 @@ impl NoiseBeside {
     }
 
     fn close_stretch(&mut self) {
-        let n = self.stretch as f64;
-        let turns: Vec<Complex64> = (0..self.stretch).map(|i| Complex64::cis(-TAU * i as f64 / n)).collect();
         let weight: f64 = self.window.iter().sum();
-        for (line, sum) in self.gathered.iter().zip(&mut self.line_power) {
-            let amplitude =
-                line.iter().zip(&self.window).map(|(value, w)| w * value).sum::<Complex64>() / weight;
-            *sum += amplitude.norm_sqr();
-        }
-        for (line, power) in self.gathered.iter_mut().zip(&mut self.power) {
+        let lines = self.gathered.iter_mut().zip(&mut self.power).zip(&mut self.line_power);
+        for ((line, power), line_power) in lines {
+            line.iter_mut().zip(&self.window).for_each(|(value, w)| *value *= w);
+            self.fft.process_with_scratch(line, &mut self.scratch);
+            *line_power += line[0].norm_sqr() / (weight * weight);
             for (slot, &m) in power.iter_mut().zip(&self.bins) {
-                let mut sum = Complex64::ZERO;
-                for (i, (value, w)) in line.iter().zip(&self.window).enumerate() {
-                    let turn = (i as i64 * i64::from(m)).rem_euclid(self.stretch as i64);
-                    sum += value * turns[turn as usize] * w;
-                }
-                *slot += sum.norm_sqr();
+                *slot += line[m.rem_euclid(self.stretch as i32) as usize].norm_sqr();
             }
             line.clear();
         }

@@ -8,6 +8,7 @@ use super::findings::TrackPoint;
 use super::gather::{Gather, Gathered};
 use super::likeliest::reach_hz;
 use super::orders::OrderMeter;
+use super::reading::{read_all, read_channel};
 use super::reference::{mean_frequency_hz, motion, reference_frequency_hz, reference_track};
 use super::spectrum::{Spectrum, SpectrumMeter};
 use super::spread::Wander;
@@ -20,8 +21,6 @@ use crate::capture::Capture;
 use rayon::prelude::*;
 use std::f64::consts::TAU;
 
-/// Frames read at a time.
-const BLOCK_FRAMES: usize = 1 << 16;
 /// Harmonics are measured up to this frequency.
 const TOP_HZ: f64 = 5000.0;
 /// and up to this share of the sample rate.
@@ -43,41 +42,15 @@ pub(super) fn survey(
         .filter(|&channel| only.is_none_or(|wanted| wanted == channel + 1))
         .map(|channel| (channel, ChannelSurvey::new(rate_hz, format.duration_s())))
         .collect();
-    each_block(
-        capture,
-        &mut |planes| surveys.par_iter_mut().for_each(|(channel, survey)| survey.push(&planes[*channel])),
-        progress,
-    )?;
-    Ok(surveys.into_par_iter().map(|(channel, survey)| (channel, survey.finish())).collect())
-}
-
-fn each_block(
-    capture: &mut dyn Capture,
-    take: &mut dyn FnMut(&[Vec<f64>]),
-    progress: &mut dyn FnMut(f64),
-) -> Result<(), AnalysisError> {
-    let format = capture.format().clone();
-    let mut planes = vec![Vec::new(); format.channels];
-    capture.rewind()?;
-    let mut read = 0u64;
-    loop {
-        let frames = capture.read_block(&mut planes, BLOCK_FRAMES)?;
-        if frames == 0 {
-            return Ok(());
-        }
-        take(&planes);
-        read += frames as u64;
-        progress((read as f64 / format.frames.max(1) as f64).min(1.0));
+    if let [(channel, survey)] = &mut surveys[..] {
+        read_channel(capture, *channel, &mut |samples| survey.push(samples), progress)?;
+    } else {
+        let mut take = |planes: &[Vec<f64>]| {
+            surveys.par_iter_mut().for_each(|(channel, survey)| survey.push(&planes[*channel]));
+        };
+        read_all(capture, &mut take, progress)?;
     }
-}
-
-pub(super) fn read_channel(
-    capture: &mut dyn Capture,
-    channel: usize,
-    take: &mut dyn FnMut(&[f64]),
-    progress: &mut dyn FnMut(f64),
-) -> Result<(), AnalysisError> {
-    each_block(capture, &mut |planes| take(&planes[channel]), progress)
+    Ok(surveys.into_par_iter().map(|(channel, survey)| (channel, survey.finish())).collect())
 }
 
 /// What pass 2 gives.
