@@ -1,11 +1,11 @@
 //! Fewer samples a second where only low frequencies matter, with a known response.
 
-use pulp::Arch;
+use pulp::{Arch, Simd, WithSimd};
 use std::f64::consts::{PI, TAU};
 
 /// Stop-band rejection of the decimating filters in decibels.
 const REJECTION_DB: f64 = 120.0;
-/// Products summed side by side: two of the widest registers' worth.
+/// Taps come in whole numbers of the widest registers.
 const LANES: usize = 8;
 
 /// Linear-phase low-passes that keep every M-th sample between them.
@@ -124,9 +124,9 @@ impl Stage {
         let Self { factor, taps, held, .. } = self;
         let (factor, length) = (*factor, taps.len());
         let ready = (held.len() + factor).saturating_sub(length) / factor;
-        self.arch.dispatch(|| {
-            out.extend((0..ready).map(|m| scalar_product(taps, &held[m * factor..m * factor + length])));
-        });
+        let from = out.len();
+        out.resize(from + ready, 0.0);
+        self.arch.dispatch(Thin { taps, held, factor, out: &mut out[from..] });
         held.drain(..ready * factor);
     }
 
@@ -136,18 +136,37 @@ impl Stage {
     }
 }
 
-/// Σ aᵢbᵢ of two slices of one length, a whole number of lanes; in one fixed order, so
-/// that every machine gives the same.
-#[inline(always)]
-fn scalar_product(a: &[f64], b: &[f64]) -> f64 {
-    let mut sums = [0.0; LANES];
-    for (x, y) in a.as_chunks::<LANES>().0.iter().zip(b.as_chunks::<LANES>().0) {
-        for i in 0..LANES {
-            sums[i] += x[i] * y[i];
+/// The filter at every `factor`-th place of `held`, for the widest registers there are.
+struct Thin<'a> {
+    taps: &'a [f64],
+    held: &'a [f64],
+    factor: usize,
+    out: &'a mut [f64],
+}
+
+impl WithSimd for Thin<'_> {
+    type Output = ();
+
+    #[inline(always)]
+    fn with_simd<S: Simd>(self, simd: S) {
+        let taps = S::as_simd_f64s(self.taps).0;
+        for (m, slot) in self.out.iter_mut().enumerate() {
+            let from = m * self.factor;
+            let held = S::as_simd_f64s(&self.held[from..from + self.taps.len()]).0;
+            // Two sums, as the next product need not wait for the last.
+            let (mut even, mut odd) = (simd.splat_f64s(0.0), simd.splat_f64s(0.0));
+            let (pairs, last) = taps.as_chunks::<2>();
+            let (held_pairs, held_last) = held.as_chunks::<2>();
+            for (tap, x) in pairs.iter().zip(held_pairs) {
+                even = simd.mul_add_e_f64s(tap[0], x[0], even);
+                odd = simd.mul_add_e_f64s(tap[1], x[1], odd);
+            }
+            if let ([tap], [x]) = (last, held_last) {
+                even = simd.mul_add_e_f64s(*tap, *x, even);
+            }
+            *slot = simd.reduce_sum_f64s(simd.add_f64s(even, odd));
         }
     }
-    let [a, b, c, d, e, f, g, h] = sums;
-    ((a + e) + (b + f)) + ((c + g) + (d + h))
 }
 
 /// Half of a symmetrical low-pass, centre first, unit gain at zero frequency.
