@@ -179,7 +179,7 @@ fn analyse_one(
             reference.clone()
         };
         if let Some(apart) = tracked_apart(capture, channel, &first, &verdict, other.mean_hz())? {
-            tracked = Tracked { lines: tracked.lines, ..apart };
+            tracked = Tracked { orders: tracked.orders, lines: tracked.lines, ..apart };
             reference = first;
         }
     }

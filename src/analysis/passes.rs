@@ -5,7 +5,7 @@ use super::besides::{each_line_once, other_supply};
 use super::comb::Candidate;
 use super::company::{APART_HOP_S, are_shared, usual_beside};
 use super::findings::TrackPoint;
-use super::gather::{Gather, Gathered};
+use super::gather::{Gather, Gathered, kept_orders};
 use super::likeliest::reach_hz;
 use super::orders::OrderMeter;
 use super::reading::{read_all, read_channel};
@@ -71,7 +71,8 @@ pub(super) fn second_pass(
     let format = capture.format().clone();
     let (rate_hz, duration_s) = (f64::from(format.sample_rate_hz), format.duration_s());
     let reference = reference_track(best, &survey.times_s, duration_s);
-    let orders = orders_below_top(best.mean_hz(), rate_hz);
+    let all = orders_below_top(best.mean_hz(), rate_hz);
+    let orders = kept_orders(all, &best.orders, best.mean_hz(), duration_s);
     let mut gather = Gather::new(rate_hz, &reference, &orders, format.frames);
     let mut spectrum = SpectrumMeter::new(rate_hz, duration_s);
     read_channel(
@@ -224,8 +225,8 @@ pub(super) fn third_pass(
     // A line that stands out along the track and is there all the time; one
     // whose phasors the tracker never saw as steady is somebody's note.
     let steady = |order: u32| {
-        let i = order as usize - 1;
-        tracked.lines.get(i).is_some_and(|line| line.lasting > 2.0 && line.steadiness > 0.5)
+        let followed = tracked.line_of(order);
+        followed.is_none_or(|line| line.lasting > 2.0 && line.steadiness > 0.5)
     };
     let listed = levels
         .iter()

@@ -17,6 +17,7 @@ use super::window::BLACKMAN_HARRIS;
 use num_complex::Complex64;
 use rayon::prelude::*;
 use realfft::{RealFftPlanner, RealToComplex};
+use std::array;
 use std::f64::consts::{PI, TAU};
 use std::sync::Arc;
 
@@ -251,15 +252,10 @@ impl KernelTable {
         let half = 0.5 / PIECES as f64;
         let piece = |i: usize| {
             let middle = (i as f64 + 0.5) / PIECES as f64;
-            let mut parabolas = [[0.0; NODES]; 3];
-            for n in 0..NODES {
-                let at = |offset: f64| kernel(middle + offset + NODES as f64 / 2.0 - 1.0 - n as f64);
-                let (before, here, after) = (at(-half), at(0.0), at(half));
-                parabolas[0][n] = here;
-                parabolas[1][n] = (after - before) / (2.0 * half);
-                parabolas[2][n] = (after - 2.0 * here + before) / (2.0 * half * half);
-            }
-            parabolas
+            let at = |offset: f64, n: usize| kernel(middle + offset + NODES as f64 / 2.0 - 1.0 - n as f64);
+            let slope = |n| (at(half, n) - at(-half, n)) / (2.0 * half);
+            let bend = |n| (at(half, n) - 2.0 * at(0.0, n) + at(-half, n)) / (2.0 * half * half);
+            [array::from_fn(|n| at(0.0, n)), array::from_fn(slope), array::from_fn(bend)]
         };
         Self { pieces: (0..PIECES).map(piece).collect() }
     }
@@ -270,7 +266,7 @@ impl KernelTable {
         let i = (at as usize).min(PIECES - 1);
         let t = (at - i as f64 - 0.5) / PIECES as f64;
         let [constant, linear, square] = &self.pieces[i];
-        std::array::from_fn(|n| constant[n] + t * (linear[n] + t * square[n]))
+        array::from_fn(|n| constant[n] + t * (linear[n] + t * square[n]))
     }
 }
 

@@ -6,8 +6,9 @@ use num_complex::Complex64;
 use realfft::{RealFftPlanner, RealToComplex};
 use std::sync::Arc;
 
-/// Longest segment in seconds.
+/// Longest segment in seconds, and in samples: the transform of more takes too much memory.
 const SEGMENT_S: f64 = 4.0;
+const LONGEST_SEGMENT: usize = 1 << 18;
 /// About so many segments are looked at in a long recording, evenly spread.
 const SEGMENTS: usize = 64;
 
@@ -43,9 +44,10 @@ pub struct SpectrumMeter {
 }
 
 impl SpectrumMeter {
-    /// For a recording of `duration_s`: segments of 4 s, or of the whole if it is shorter.
+    /// For a recording of `duration_s`: segments of 4 s (of 2¹⁸ samples from 64 kHz up), or of the
+    /// whole if it is shorter.
     pub fn new(sample_rate_hz: f64, duration_s: f64) -> Self {
-        let segment = ((SEGMENT_S.min(duration_s) * sample_rate_hz) as usize).max(16) & !1;
+        let segment = ((SEGMENT_S.min(duration_s) * sample_rate_hz) as usize).clamp(16, LONGEST_SEGMENT) & !1;
         // Under a flat top three segments in the length of one lose little.
         let step = (segment / 3).max((duration_s * sample_rate_hz) as usize / SEGMENTS).max(1);
         let window = FLAT_TOP.samples(segment);

@@ -138,8 +138,17 @@ pub(super) struct Tracked {
     pub wander: f64,
     /// Advance of the offset over the capture.
     pub advance: Advance,
-    /// How each order stands, in the sequence of the orders.
+    /// Orders followed.
+    pub orders: Vec<u32>,
+    /// How each stands, in their sequence.
     pub lines: Vec<Line>,
+}
+
+impl Tracked {
+    /// How an order stands; `None` where it was not followed.
+    pub fn line_of(&self, order: u32) -> Option<&Line> {
+        self.orders.iter().position(|followed| *followed == order).map(|i| &self.lines[i])
+    }
 }
 
 /// How one harmonic stands in the cells.
@@ -183,7 +192,8 @@ pub(super) fn track(cells: &Cells, clear: &[u32], reach_hz: f64, duration_s: f64
     let (phases, wander, smoothed) = found?;
     let advance = phases.advance(wander, duration_s);
     let lines = (0..cells.orders.len()).map(|i| standing(cells, i, &smoothed.phase_rad)).collect();
-    Some(Tracked { smoothed, phases, wander, advance, lines })
+    let orders = cells.orders.clone();
+    Some(Tracked { smoothed, phases, wander, advance, orders, lines })
 }
 
 /// One measured phase a cell, by all significant harmonics together.
