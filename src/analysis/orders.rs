@@ -14,6 +14,9 @@ const STRETCH_BLOCKS: usize = 128;
 const FADE_SHARE: f64 = 0.12;
 /// Longest fade in seconds: lines 1 Hz apart are then apart by over 90 dB.
 const LONGEST_FADE_S: f64 = 4.0;
+/// The even and the faded mean differ by more than noise makes them when the square of the
+/// difference is so many times its mean (5 % of the time where nothing else is near).
+const BY_MORE_THAN_NOISE: f64 = 3.0;
 
 /// One harmonic as measured along the track.
 #[derive(Debug, Clone, PartialEq)]
@@ -41,21 +44,52 @@ pub struct OrderLevel {
 
 /// Measures harmonics coherently along a phase track, block by block.
 ///
-/// All samples are taken with one long window that fades in and out, so other
-/// harmonics and a strong wanted signal do not leak into a weak residual; the
-/// noise around each line comes from the spectrum beside it. Memory does not
-/// grow with the recording.
+/// Two means are taken. In the even one all blocks count alike, which errs least: the blocks'
+/// own edges keep lines half a fundamental apart from each other by over 90 dB. The other
+/// fades in and out over seconds, so that nothing nearer leaks into a weak residual, and costs
+/// some 7 % in error. The even mean is read where the two agree as far as noise lets them
+/// (Hausman, Econometrica 46, 1978), the faded one elsewhere. The noise around each line comes
+/// from the spectrum beside it. Memory does not grow with the recording.
 pub struct OrderMeter {
     bank: PhasorBank,
     track: PhaseTrack,
     orders: Vec<u32>,
     duration_s: f64,
     fade: Fade,
+    even: BlockMean,
+    faded: BlockMean,
+    blocks_seen: usize,
+    noise: NoiseBeside,
+}
+
+/// A weighted mean of the blocks' phasors.
+struct BlockMean {
     sums: Vec<Complex64>,
     weight: f64,
     weight_squared: f64,
-    blocks_seen: usize,
-    noise: NoiseBeside,
+}
+
+impl BlockMean {
+    fn new(orders: usize) -> Self {
+        Self { sums: vec![Complex64::ZERO; orders], weight: 0.0, weight_squared: 0.0 }
+    }
+
+    fn take(&mut self, weight: f64, values: &[Complex64]) {
+        for (sum, value) in self.sums.iter_mut().zip(values) {
+            *sum += weight * value;
+        }
+        self.weight += weight;
+        self.weight_squared += weight * weight;
+    }
+
+    fn of(&self, line: usize) -> Complex64 {
+        if self.weight > 0.0 { self.sums[line] / self.weight } else { Complex64::ZERO }
+    }
+
+    /// Noise bandwidth in hertz.
+    fn bandwidth_hz(&self, hop_s: f64) -> f64 {
+        self.weight_squared / (self.weight * self.weight * hop_s)
+    }
 }
 
 impl OrderMeter {
@@ -73,9 +107,8 @@ impl OrderMeter {
             orders: orders.to_vec(),
             duration_s,
             fade,
-            sums: vec![Complex64::ZERO; orders.len()],
-            weight: 0.0,
-            weight_squared: 0.0,
+            even: BlockMean::new(orders.len()),
+            faded: BlockMean::new(orders.len()),
             blocks_seen: 0,
             noise,
         }
@@ -93,31 +126,40 @@ impl OrderMeter {
         self.take(blocks);
         let densities = self.noise.densities();
         let powers = self.noise.line_powers(&densities);
-        let orders = self.orders.iter().zip(&self.sums).zip(densities).zip(powers);
-        orders.map(|(((&order, &sum), density), power)| self.level(order, sum, density, power)).collect()
+        let lines = densities.into_iter().zip(powers).enumerate();
+        lines.map(|(line, (density, power))| self.level(line, density, power)).collect()
     }
 
     fn take(&mut self, blocks: Vec<BlockPhasors>) {
         for block in blocks {
-            let weight = self.fade.at(self.blocks_seen);
-            for (sum, value) in self.sums.iter_mut().zip(&block.values) {
-                *sum += weight * value;
-            }
-            self.weight += weight;
-            self.weight_squared += weight * weight;
+            self.even.take(1.0, &block.values);
+            self.faded.take(self.fade.at(self.blocks_seen), &block.values);
             self.noise.take(&block.values);
             self.blocks_seen += 1;
         }
     }
 
-    fn level(&self, order: u32, sum: Complex64, density: f64, mean_power: f64) -> OrderLevel {
+    /// A line's phasor and the noise bandwidth it was read in.
+    fn reading(&self, line: usize, density: f64) -> (Complex64, f64) {
+        let hop_s = self.bank.hop_s();
+        let (even, faded) = (self.even.of(line), self.faded.of(line));
+        let (least_hz, more_hz) = (self.even.bandwidth_hz(hop_s), self.faded.bandwidth_hz(hop_s));
+        // The even mean has the least variance, so that of the difference is the difference's.
+        let expected = 2.0 * density * (more_hz - least_hz).max(0.0);
+        if (faded - even).norm_sqr() > BY_MORE_THAN_NOISE * expected {
+            (faded, more_hz)
+        } else {
+            (even, least_hz)
+        }
+    }
+
+    fn level(&self, line: usize, density: f64, mean_power: f64) -> OrderLevel {
+        let order = self.orders[line];
         let k = f64::from(order);
-        let phasor = if self.weight > 0.0 { sum / self.weight } else { Complex64::ZERO };
+        let (phasor, bandwidth_hz) = self.reading(line, density);
         let start = k * self.track.phase_at(0.0);
         let floor = density / self.duration_s;
         let power = 0.5 * phasor.norm_sqr();
-        // Noise bandwidth of the weighted sum of blocks, in hertz.
-        let bandwidth_hz = self.weight_squared / (self.weight * self.weight * self.bank.hop_s());
         let relative = (0.5 * density * bandwidth_hz / power.max(1e-40)).sqrt();
         OrderLevel {
             order,
