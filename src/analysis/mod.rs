@@ -22,6 +22,7 @@ mod phasors;
 mod presence;
 mod reading;
 mod reference;
+mod reread;
 mod spectrum;
 mod spread;
 mod supplies;

@@ -42,24 +42,29 @@ pub struct OrderLevel {
     pub floor_dbfs: f64,
 }
 
-/// Measures harmonics coherently along a phase track, block by block.
-///
-/// Two means are taken. In the even one all blocks count alike, which errs least: the blocks'
-/// own edges keep lines half a fundamental apart from each other by over 90 dB. The other
-/// fades in and out over seconds, so that nothing nearer leaks into a weak residual, and costs
-/// some 7 % in error. The even mean is read where the two agree as far as noise lets them
-/// (Hausman, Econometrica 46, 1978), the faded one elsewhere. The noise around each line comes
-/// from the spectrum beside it. Memory does not grow with the recording.
+/// Measures harmonics coherently along a phase track, block by block; memory does not grow
+/// with the recording.
 pub struct OrderMeter {
     bank: PhasorBank,
     track: PhaseTrack,
+    means: LineMeans,
+    noise: NoiseBeside,
+}
+
+/// Two means of each line's phasors along the track.
+///
+/// In the even one all blocks count alike, which errs least: the blocks' own edges keep lines
+/// half a fundamental apart from each other by over 90 dB. The other fades in and out over
+/// seconds, so that nothing nearer leaks into a weak residual, and costs some 7 % in error. The
+/// even mean is read where the two agree as far as noise lets them (Hausman, Econometrica 46,
+/// 1978), the faded one elsewhere.
+pub(super) struct LineMeans {
     orders: Vec<u32>,
-    duration_s: f64,
+    hop_s: f64,
     fade: Fade,
     even: BlockMean,
     faded: BlockMean,
-    blocks_seen: usize,
-    noise: NoiseBeside,
+    taken: usize,
 }
 
 /// A weighted mean of the blocks' phasors.
@@ -99,19 +104,9 @@ impl OrderMeter {
         let hop_s = block_hop_s(track.mean_frequency_hz(), duration_s);
         let bank = PhasorBank::new(sample_rate_hz, track, orders, hop_s);
         let blocks = bank.blocks_in((duration_s * sample_rate_hz).round() as u64);
-        let fade = Fade::new(blocks, bank.hop_s());
+        let means = LineMeans::new(orders, bank.hop_s(), blocks);
         let noise = NoiseBeside::new(blocks, bank.hop_s(), orders.len());
-        Self {
-            bank,
-            track: track.clone(),
-            orders: orders.to_vec(),
-            duration_s,
-            fade,
-            even: BlockMean::new(orders.len()),
-            faded: BlockMean::new(orders.len()),
-            blocks_seen: 0,
-            noise,
-        }
+        Self { bank, track: track.clone(), means, noise }
     }
 
     /// Takes the next samples.
@@ -126,24 +121,48 @@ impl OrderMeter {
         self.take(blocks);
         let densities = self.noise.densities();
         let powers = self.noise.line_powers(&densities);
-        let lines = densities.into_iter().zip(powers).enumerate();
-        lines.map(|(line, (density, power))| self.level(line, density, power)).collect()
+        self.means.levels(&self.track, &densities, &powers)
     }
 
     fn take(&mut self, blocks: Vec<BlockPhasors>) {
         for block in blocks {
-            self.even.take(1.0, &block.values);
-            self.faded.take(self.fade.at(self.blocks_seen), &block.values);
+            self.means.take(&block.values);
             self.noise.take(&block.values);
-            self.blocks_seen += 1;
         }
+    }
+}
+
+impl LineMeans {
+    /// For so many blocks, one every `hop_s` seconds.
+    pub fn new(orders: &[u32], hop_s: f64, blocks: usize) -> Self {
+        Self {
+            orders: orders.to_vec(),
+            hop_s,
+            fade: Fade::new(blocks, hop_s),
+            even: BlockMean::new(orders.len()),
+            faded: BlockMean::new(orders.len()),
+            taken: 0,
+        }
+    }
+
+    /// Takes the next block's phasors.
+    pub fn take(&mut self, values: &[Complex64]) {
+        self.even.take(1.0, values);
+        self.faded.take(self.fade.at(self.taken), values);
+        self.taken += 1;
+    }
+
+    /// The levels, from the noise density at each line (mean square per hertz) and its mean
+    /// power over time.
+    pub fn levels(&self, track: &PhaseTrack, densities: &[f64], powers: &[f64]) -> Vec<OrderLevel> {
+        let lines = densities.iter().zip(powers).enumerate();
+        lines.map(|(line, (&density, &power))| self.level(line, track, density, power)).collect()
     }
 
     /// A line's phasor and the noise bandwidth it was read in.
     fn reading(&self, line: usize, density: f64) -> (Complex64, f64) {
-        let hop_s = self.bank.hop_s();
         let (even, faded) = (self.even.of(line), self.faded.of(line));
-        let (least_hz, more_hz) = (self.even.bandwidth_hz(hop_s), self.faded.bandwidth_hz(hop_s));
+        let (least_hz, more_hz) = (self.even.bandwidth_hz(self.hop_s), self.faded.bandwidth_hz(self.hop_s));
         // The even mean has the least variance, so that of the difference is the difference's.
         let expected = 2.0 * density * (more_hz - least_hz).max(0.0);
         if (faded - even).norm_sqr() > BY_MORE_THAN_NOISE * expected {
@@ -153,17 +172,18 @@ impl OrderMeter {
         }
     }
 
-    fn level(&self, line: usize, density: f64, mean_power: f64) -> OrderLevel {
+    fn level(&self, line: usize, track: &PhaseTrack, density: f64, mean_power: f64) -> OrderLevel {
         let order = self.orders[line];
         let k = f64::from(order);
         let (phasor, bandwidth_hz) = self.reading(line, density);
-        let start = k * self.track.phase_at(0.0);
-        let floor = density / self.duration_s;
+        let start = k * track.phase_at(0.0);
+        let duration_s = track.time_s[track.time_s.len() - 1];
+        let floor = density / duration_s;
         let power = 0.5 * phasor.norm_sqr();
         let relative = (0.5 * density * bandwidth_hz / power.max(1e-40)).sqrt();
         OrderLevel {
             order,
-            frequency_hz: k * self.track.mean_frequency_hz(),
+            frequency_hz: k * track.mean_frequency_hz(),
             level_dbfs: power_dbfs(power),
             mean_power_dbfs: power_dbfs(mean_power),
             level_se_db: if relative.is_finite() { (relative * 20.0 / 10f64.ln()).min(99.0) } else { 99.0 },

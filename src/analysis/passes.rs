@@ -9,12 +9,13 @@ use super::gather::{Gather, Gathered, kept_orders};
 use super::likeliest::reach_hz;
 use super::orders::OrderMeter;
 use super::reading::{read_all, read_channel};
-use super::reference::{mean_frequency_hz, motion, reference_frequency_hz, reference_track};
+use super::reference::{mean_frequency_hz, motion, reference_frequency_hz, reference_track, refined_track};
+use super::reread::levels_of;
 use super::spectrum::{Spectrum, SpectrumMeter};
 use super::spread::Wander;
 use super::supplies::nearest_supply;
 use super::survey::{ChannelSurvey, Surveyed};
-use super::tracker::{Tracked, track};
+use super::tracker::{Cells, Tracked, track};
 use super::verdict::{Company, Verdict};
 use super::{AnalysisError, PhaseTrack};
 use crate::capture::Capture;
@@ -59,6 +60,8 @@ pub(super) struct Second {
     pub spectrum: Spectrum,
     pub tracked: Option<Tracked>,
     pub verdict: Option<Verdict>,
+    /// The cells that it was tracked in.
+    pub cells: Cells,
 }
 
 pub(super) fn second_pass(
@@ -96,7 +99,7 @@ pub(super) fn second_pass(
             Company::Alone,
         )
     });
-    Ok(Second { reference, spectrum: spectrum.finish(), tracked, verdict })
+    Ok(Second { reference, spectrum: spectrum.finish(), tracked, verdict, cells })
 }
 
 /// The offset from a first reference by the orders that another supply does not have, in blocks
@@ -139,31 +142,6 @@ fn orders_below_top(fundamental_hz: f64, rate_hz: f64) -> Vec<u32> {
     (1..=((top_hz / fundamental_hz) as u32).max(1)).collect()
 }
 
-/// Reference and offset as one track with knots at the cells and both ends.
-fn refined_track(reference: &PhaseTrack, tracked: &Tracked, duration_s: f64) -> PhaseTrack {
-    let cells = &tracked.phases.time_s;
-    let smoothed = &tracked.smoothed;
-    let last = cells.len() - 1;
-    let mut track = PhaseTrack { time_s: Vec::new(), phase_rad: Vec::new(), frequency_hz: Vec::new() };
-    let mut knot = |time_s: f64, cell: usize| {
-        let offset = smoothed.phase_rad[cell] + smoothed.omega[cell] * (time_s - cells[cell]);
-        track.time_s.push(time_s);
-        track.phase_rad.push(reference.phase_at(time_s) + offset);
-        track.frequency_hz.push(reference_frequency_hz(reference, time_s) + smoothed.omega[cell] / TAU);
-    };
-    knot(0.0, 0);
-    for (i, &time_s) in cells.iter().enumerate() {
-        knot(time_s, i);
-    }
-    if cells[last] < duration_s {
-        knot(duration_s, last);
-    }
-    // Phase 0 at the start, as in a track of constant frequency.
-    let start = track.phase_rad[0];
-    track.phase_rad.iter_mut().for_each(|phase| *phase -= start);
-    track
-}
-
 fn track_points(reference: &PhaseTrack, tracked: &Tracked) -> Vec<TrackPoint> {
     let cells = &tracked.phases.time_s;
     let together = cells.len().div_ceil(TRACK_POINTS);
@@ -182,21 +160,32 @@ fn track_points(reference: &PhaseTrack, tracked: &Tracked) -> Vec<TrackPoint> {
         .collect()
 }
 
+/// A comb as it was followed.
+pub(super) struct Followed<'a> {
+    pub reference: &'a PhaseTrack,
+    pub tracked: &'a Tracked,
+    /// The cells of all its orders, where it was followed in them.
+    pub cells: Option<&'a Cells>,
+}
+
+/// Levels along the track, and other supplies.
 pub(super) fn third_pass(
     capture: &mut dyn Capture,
     channel: usize,
-    reference: &PhaseTrack,
-    tracked: &Tracked,
+    followed: &Followed,
     verdict: &Verdict,
     besides: &[Candidate],
     progress: &mut dyn FnMut(f64),
 ) -> Result<Hum, AnalysisError> {
+    let Followed { reference, tracked, .. } = *followed;
     let format = capture.format().clone();
     let (rate_hz, duration_s) = (f64::from(format.sample_rate_hz), format.duration_s());
     let phase = refined_track(reference, tracked, duration_s);
     let frequency_hz = mean_frequency_hz(reference, tracked, duration_s);
     let orders = orders_below_top(frequency_hz, rate_hz);
-    let mut meter = OrderMeter::new(rate_hz, &phase, &orders);
+    let whole = followed.cells.filter(|cells| cells.orders == orders);
+    let read = whole.and_then(|cells| levels_of(cells, tracked, reference, &phase));
+    let mut meter = read.is_none().then(|| OrderMeter::new(rate_hz, &phase, &orders));
     let mut others: Vec<(&Candidate, Gather)> = besides
         .iter()
         .map(|candidate| {
@@ -212,16 +201,15 @@ pub(super) fn third_pass(
             (candidate, gather)
         })
         .collect();
-    read_channel(
-        capture,
-        channel,
-        &mut |samples| {
-            meter.push(samples);
+    // Where the cells of the second pass tell the levels, and nothing else hums, that is all.
+    if meter.is_some() || !others.is_empty() {
+        let mut take = |samples: &[f64]| {
+            meter.iter_mut().for_each(|meter| meter.push(samples));
             others.iter_mut().for_each(|(_, gather)| gather.push(samples));
-        },
-        progress,
-    )?;
-    let levels = meter.finish();
+        };
+        read_channel(capture, channel, &mut take, progress)?;
+    }
+    let levels = read.or_else(|| meter.map(OrderMeter::finish)).unwrap_or_default();
     // A line that stands out along the track and is there all the time; one
     // whose phasors the tracker never saw as steady is somebody's note.
     let steady = |order: u32| {

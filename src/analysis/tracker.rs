@@ -105,6 +105,11 @@ impl Cells {
         self.time_s.len()
     }
 
+    /// Cells but for a last one that is short.
+    pub fn whole(&self) -> usize {
+        self.share.iter().take_while(|share| **share == 1.0).count()
+    }
+
     /// What a cell reads of a line so far off its reference, against one on it.
     pub fn response(&self, offset_hz: f64) -> f64 {
         let hop_s = self.length_s / self.blocks as f64;

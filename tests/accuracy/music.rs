@@ -80,7 +80,11 @@ pub fn under_music(over_hum_db: f64, swing_hz: f64, seed: u64) -> Option<Outcome
     let mains = run(RATE, vec![samples]).analysis.mains;
     let bound = bound_hz(&beside, truth);
     if std::env::var("NOTCHWRIGHT_SHOW").is_ok() {
-        println!("seed {seed}: bound {bound:.2e}, error {:?}, stated {:?}", mains.frequency_hz.map(|f| (f - truth) / bound), mains.frequency_se_hz.map(|s| s / bound));
+        println!(
+            "seed {seed}: bound {bound:.2e}, error {:?}, stated {:?}",
+            mains.frequency_hz.map(|f| (f - truth) / bound),
+            mains.frequency_se_hz.map(|s| s / bound)
+        );
     }
     Some(Outcome { error: mains.frequency_hz? - truth, bound, stated: mains.frequency_se_hz? })
 }

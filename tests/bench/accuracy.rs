@@ -37,8 +37,12 @@ fn main() {
         for over_db in [30.0, 50.0] {
             levels::score_known_track(over_db, trials);
         }
-        for (lines, colour) in [(&ONE[..], Colour::White), (&FIVE[..], Colour::White), (&FIVE[..], Colour::OneOverF)] {
-            for (over_db, drift_hz) in [(30.0, 0.0), (30.0, levels::DRIFT), (50.0, 0.0), (50.0, levels::DRIFT)] {
+        for (lines, colour) in
+            [(&ONE[..], Colour::White), (&FIVE[..], Colour::White), (&FIVE[..], Colour::OneOverF)]
+        {
+            for (over_db, drift_hz) in
+                [(30.0, 0.0), (30.0, levels::DRIFT), (50.0, 0.0), (50.0, levels::DRIFT)]
+            {
                 levels::score(lines, colour, over_db, drift_hz, trials);
             }
         }
