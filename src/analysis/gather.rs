@@ -14,6 +14,8 @@ const FINE_S: f64 = 0.08;
 const LONGEST_FINE_S: f64 = 900.0;
 /// Most phasors kept in long cells: 16 MB, whatever the length of the capture.
 const MOST_PHASORS: usize = 1 << 20;
+/// Most long cells: what follows a phase through them takes some 400 bytes each.
+const MOST_CELLS: usize = 40_000;
 /// Orders kept where all of them are too many: the clearest tell the phase.
 const CLEAREST: usize = 16;
 /// Blocks in a cell, where there are enough.
@@ -48,7 +50,7 @@ impl Gather {
         let blocks = bank.blocks_in(frames);
         // Six blocks are nearly independent of the next six; a short capture
         // needs some twenty cells the more, a very long one longer cells.
-        let most = (MOST_PHASORS / orders.len().max(1)).max(1);
+        let most = (MOST_PHASORS / orders.len().max(1)).clamp(1, MOST_CELLS);
         let together = (blocks / 20).clamp(1, TOGETHER).max(blocks.div_ceil(most));
         let noise = NoiseBeside::new(blocks, bank.hop_s(), orders.len());
         let cells = Cells::new(orders, bank.hop_s(), together);
