@@ -13,6 +13,7 @@ use super::presence::{is_there_throughout, share_present};
 use num_complex::Complex64;
 use rayon::prelude::*;
 use std::f64::consts::{LN_2, TAU};
+use std::sync::Arc;
 
 /// Longest window of the search in seconds.
 const LONGEST_WINDOW_S: f64 = 32.0;
@@ -336,7 +337,7 @@ fn median(values: &mut [f64]) -> f64 {
 struct Search<'a> {
     cells: &'a Cells,
     /// Lines to use.
-    lines: Vec<SearchLine>,
+    lines: Arc<[SearchLine]>,
     window: usize,
     fits: Vec<Fit>,
 }
@@ -416,7 +417,7 @@ impl<'a> Search<'a> {
         if chosen.is_empty() {
             return None;
         }
-        let lines: Vec<SearchLine> = chosen.into_iter().map(|i| SearchLine::new(cells, i)).collect();
+        let lines: Arc<[SearchLine]> = chosen.into_iter().map(|i| SearchLine::new(cells, i)).collect();
         let longest = ((LONGEST_WINDOW_S / cells.length_s) as usize).clamp(4, cells.count());
         let shortest = ((1.0 / cells.length_s) as usize).clamp(4, longest);
         let lengths = std::iter::successors(Some(longest), |&n| (n / 2 >= shortest).then_some(n / 2));
@@ -472,7 +473,7 @@ impl<'a> Search<'a> {
         let mut grid = vec![0.0; 2 * steps as usize + 1];
         for (n, places) in grid.chunks_mut(TOGETHER).enumerate() {
             let offsets_hz = std::array::from_fn(|i| offset_hz(n * TOGETHER + i));
-            for line in &self.lines {
+            for line in self.lines.iter() {
                 let sums = line.sums_at(bounds, offsets_hz, self.cells.length_s);
                 let scale = 1.0 / (2.0 * line.variance * cells as f64);
                 places.iter_mut().zip(sums).for_each(|(place, sum)| *place += scale * sum.norm_sqr());
