@@ -3,12 +3,13 @@
 use std::path::Path;
 
 use notchwright::analysis::{Analysis, Harmonic, Mains};
-use notchwright::network::{Load, Source};
+use notchwright::network::{Circuit, Load, PartValue, Source};
 use notchwright::parts::{Part, PartKind, Stock, yaml};
 use notchwright::plan::{
-    Centre, Design, KeepBand, LineBrief, Plan, PlanError, PlanOptions, ReductionTarget,
+    Builds, Centre, Design, KeepBand, LineBrief, Plan, PlanError, PlanOptions, ReductionTarget, build,
     largest_q_for_detuning, least_q_for_loss, plan,
 };
+use rayon::prelude::*;
 
 /// The list that goes with the examples: coils to 10 H with Q about 10 at 50 Hz.
 fn bench_stock() -> Stock {
@@ -185,48 +186,144 @@ fn drawn_brief(seed: u64) -> (Analysis, LineBrief) {
     (findings(nominal_hz, &levels), brief)
 }
 
-/// Largest loss or gain in the judged parts of a band, looked for at a thousand points of each.
-fn largest_loss_db(design: &Design, band: &KeepBand, lines_hz: &[f64], guard_hz: f64) -> f64 {
-    let judged = band.judged(lines_hz, guard_hz).into_iter();
-    let points = judged.flat_map(|(from_hz, to_hz)| {
+/// Largest loss or gain in the judged parts of a band: looked for at so many points an octave, and
+/// between the neighbours of the three best of them by golden section.
+fn largest_loss_db(
+    circuit: &Circuit,
+    values: &[PartValue],
+    judged: &[(f64, f64)],
+    points_an_octave: f64,
+) -> f64 {
+    let evaluator = circuit.evaluator(values);
+    let mut most_db: f64 = 0.0;
+    for &(from_hz, to_hz) in judged {
         let lowest_hz = from_hz.max(1e-4 * to_hz);
-        (0..1000).map(move |n| lowest_hz * (to_hz / lowest_hz).powf(f64::from(n) / 999.0))
-    });
-    let loss_db = |hz: f64| -20.0 * design.circuit.insertion(hz).norm().log10();
-    points.map(|hz| loss_db(hz).abs()).fold(0.0, f64::max)
+        let count = (points_an_octave * (to_hz / lowest_hz).log2()).ceil() as usize + 1;
+        let ratio = (to_hz / lowest_hz).powf(1.0 / count as f64);
+        let mut hz: Vec<f64> = (0..=count).map(|n| lowest_hz * ratio.powi(n as i32)).collect();
+        hz[0] = from_hz;
+        hz[count] = to_hz;
+        let mut losses = vec![0.0; hz.len()];
+        evaluator.insertion_db_each(&hz, &mut losses);
+        losses.iter_mut().for_each(|loss_db| *loss_db = loss_db.abs());
+        most_db = losses.iter().copied().fold(most_db, f64::max);
+        let mut tops: Vec<usize> =
+            (1..count).filter(|&n| losses[n] >= losses[n - 1] && losses[n] >= losses[n + 1]).collect();
+        tops.sort_by(|&a, &b| losses[b].total_cmp(&losses[a]));
+        for n in tops.into_iter().take(3) {
+            let top_db = greatest(|hz| evaluator.insertion_db(hz).abs(), hz[n - 1], hz[n + 1]);
+            most_db = most_db.max(top_db);
+        }
+    }
+    most_db
+}
+
+/// The greatest value of a function of one top between two ends, by golden section.
+fn greatest(f: impl Fn(f64) -> f64, mut from: f64, mut to: f64) -> f64 {
+    let golden = (5f64.sqrt() - 1.0) / 2.0;
+    for _ in 0..30 {
+        let (a, b) = (to - golden * (to - from), from + golden * (to - from));
+        if f(a) > f(b) { to = b } else { from = a }
+    }
+    f(0.5 * (from + to))
+}
+
+/// Briefs of which the first 224 have a peak of loss narrower than a tenth of an octave that
+/// is the largest loss in the band.
+const NARROW: [u64; 3] = [13, 14, 46];
+
+/// For every day the first eight, which are as good as any, and those of narrow peaks; or as many
+/// from 0 on as the environment asks for (`NOTCHWRIGHT_BRIEFS=224`).
+fn drawn_briefs() -> Vec<u64> {
+    match std::env::var("NOTCHWRIGHT_BRIEFS") {
+        Ok(count) => (0..count.parse().expect("a number of briefs")).collect(),
+        Err(_) => (0..8).chain(NARROW).collect(),
+    }
+}
+
+/// Plans of drawn briefs from both lists, where there is something to judge: seed, name, brief,
+/// list and plan.
+fn plans_of_drawn_briefs() -> impl Iterator<Item = (u64, String, LineBrief, Stock, Plan)> {
+    let lists = [("bench list", bench_stock()), ("built-in list", Stock::built_in())];
+    lists.into_iter().flat_map(|(list, stock)| {
+        drawn_briefs().into_iter().filter_map(move |seed| {
+            let (analysis, brief) = drawn_brief(seed);
+            let name = format!("{list}, brief {seed}");
+            match plan(&analysis, &brief, &stock, &PlanOptions::default(), &mut |_| {}) {
+                Ok(plan) => Some((seed, name, brief, stock.clone(), plan)),
+                Err(PlanError::NothingToJudge { .. }) => None,
+                Err(error) => panic!("{name}: {error}"),
+            }
+        })
+    })
 }
 
 #[test]
 fn whatever_the_brief_the_answer_is_a_plan_from_listed_parts_or_a_reason() {
-    for stock in [bench_stock(), Stock::built_in()] {
-        for seed in 0..8 {
-            let (analysis, brief) = drawn_brief(seed);
-            let plan = match plan(&analysis, &brief, &stock, &PlanOptions::default(), &mut |_| {}) {
-                Ok(plan) => plan,
-                Err(PlanError::NothingToJudge { .. }) => continue,
-                Err(error) => panic!("brief {seed}: {error}"),
-            };
-            assert!(plan.design.met || !plan.obstacles.is_empty(), "brief {seed}: missed without a reason");
-            let (reduction_db, loss_db) = worst(&plan.design);
-            assert!(reduction_db.is_finite() && loss_db.is_finite(), "brief {seed}");
-            if plan.design.met {
-                let allowed = plan.design.keep.iter().all(|band| band.loss_db.abs() <= band.allowed_db);
-                let enough =
-                    plan.design.predicted.iter().all(|order| Some(order.reduction_db) >= order.target_db);
-                assert!(allowed && enough, "brief {seed}: met, but not nominally");
-            }
-            for part in &plan.design.circuit.parts {
-                assert!(is_listed(part, &stock), "brief {seed}: {} {}", part.reference, part.value);
-            }
-            let lines_hz: Vec<f64> =
-                plan.design.predicted.iter().map(|order| f64::from(order.order) * plan.centre_hz).collect();
-            for (told, band) in plan.design.keep.iter().zip(&brief.keep) {
-                let true_db = largest_loss_db(&plan.design, band, &lines_hz, brief.guard_hz);
-                let near = (told.loss_db.abs() - true_db).abs() <= 0.02 * true_db + 0.005;
-                assert!(near, "brief {seed}: {true_db} dB in the band, {} dB told", told.loss_db);
+    let mut wrong = Vec::new();
+    for (seed, name, brief, stock, plan) in plans_of_drawn_briefs() {
+        assert!(plan.design.met || !plan.obstacles.is_empty(), "{name}: missed without a reason");
+        let (reduction_db, loss_db) = worst(&plan.design);
+        assert!(reduction_db.is_finite() && loss_db.is_finite(), "{name}");
+        if plan.design.met {
+            let allowed = plan.design.keep.iter().all(|band| band.loss_db.abs() <= band.allowed_db);
+            let enough =
+                plan.design.predicted.iter().all(|order| Some(order.reduction_db) >= order.target_db);
+            assert!(allowed && enough, "{name}: met, but not nominally");
+        }
+        for part in &plan.design.circuit.parts {
+            assert!(is_listed(part, &stock), "{name}: {} {}", part.reference, part.value);
+        }
+        // The builds of every plan would take too long.
+        let builds_too = NARROW.contains(&seed) || seed % 16 == 8;
+        println!(
+            "{name}: met {}, {} of builds, {}",
+            plan.design.met, plan.design.builds.meeting_pct, plan.design.summary
+        );
+        wrong.extend(
+            untrue_losses(&brief, &plan, builds_too).into_iter().map(|told| format!("{name}, {told}")),
+        );
+    }
+    assert!(wrong.is_empty(), "{}", wrong.join("\n"));
+}
+
+/// What is told of the keep bands and is not true of the whole bands to 0.02 dB or 1 %: of all
+/// designs the loss by nominal parts, of the first one that of its builds too.
+fn untrue_losses(brief: &LineBrief, plan: &Plan, builds_too: bool) -> Vec<String> {
+    let lines_hz: Vec<f64> =
+        plan.design.predicted.iter().map(|order| f64::from(order.order) * plan.centre_hz).collect();
+    let mut losses = Vec::new();
+    for (number, design) in std::iter::once(&plan.design).chain(&plan.alternatives).enumerate() {
+        for (told, band) in design.keep.iter().zip(&brief.keep) {
+            let name = format!("design {number}, {} to {} Hz", band.from_hz, band.to_hz);
+            let judged = band.judged(&lines_hz, brief.guard_hz);
+            let true_db = largest_loss_db(&design.circuit, &design.circuit.values(), &judged, 3000.0);
+            losses.push((name.clone(), told.loss_db.abs(), true_db));
+            if number == 0 && builds_too {
+                let true_db = loss_of_builds_db(design, brief, &judged);
+                losses.push((format!("builds of {name}"), told.loss_worst_db.abs(), true_db));
             }
         }
     }
+    let untrue = losses
+        .into_iter()
+        .filter(|(_, told_db, true_db)| (told_db - true_db).abs() > (0.01 * true_db).max(0.02));
+    untrue.map(|(name, told_db, true_db)| format!("{name}: {true_db} dB, {told_db} dB told")).collect()
+}
+
+/// The loss that 95 % of the design's builds stay within.
+fn loss_of_builds_db(design: &Design, brief: &LineBrief, judged: &[(f64, f64)]) -> f64 {
+    let temperature_c = (brief.temperature_from_c, brief.temperature_to_c);
+    let Builds { count, seed, .. } = design.builds;
+    let mut losses: Vec<f64> = (0..count)
+        .into_par_iter()
+        .map(|index| {
+            let values = build(&design.circuit, &design.trims, temperature_c, seed, index);
+            largest_loss_db(&design.circuit, &values, judged, 500.0)
+        })
+        .collect();
+    losses.sort_by(f64::total_cmp);
+    losses[(0.95 * f64::from(count)).ceil() as usize - 1]
 }
 
 #[test]

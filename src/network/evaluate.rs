@@ -7,7 +7,7 @@ use num_complex::Complex64;
 use super::branch::is_zero;
 use super::chain::{Chain, chain_of};
 use super::circuit::{Circuit, Load, Source};
-use super::ladder::{Lanes, Walk, is_sound};
+use super::ladder::{Lanes, Places, Walk, is_sound};
 use super::values::{PartValue, Values};
 
 /// Frequencies walked together by [`Evaluator::insertion_power_each`].
@@ -49,8 +49,8 @@ const NUDGE: f64 = 1.0 / (1u32 << 30) as f64;
 /// ```
 #[derive(Debug, Clone, Copy)]
 pub struct Evaluator<'a> {
-    circuit: &'a Circuit,
-    values: &'a [PartValue],
+    pub(super) circuit: &'a Circuit,
+    pub(super) values: &'a [PartValue],
 }
 
 impl Circuit {
@@ -113,9 +113,7 @@ impl Evaluator<'_> {
     fn insertion_power<const N: usize>(&self, frequencies_hz: &[f64; N]) -> [f64; N] {
         let omega = frequencies_hz.map(|hz| TAU * hz);
         let (d, loading) = walk_to_source(self.circuit, self.values, &omega);
-        let (source, load) =
-            (source_lanes(&self.circuit.source, &omega), load_lanes(&self.circuit.load, &omega));
-        let wire = Lanes::ONE + source * load;
+        let wire = wire_lanes(self.circuit, &omega);
         let power = |z: &Lanes<N>, k: usize| z.re[k] * z.re[k] + z.im[k] * z.im[k];
         std::array::from_fn(|k| {
             if is_sound(loading.re[k], loading.im[k]) {
@@ -168,23 +166,28 @@ pub(super) fn chain_with<V: Values + ?Sized>(circuit: &Circuit, values: &V, omeg
 }
 
 /// d and M₁₁ + M₁₂Yl + Zs(M₂₁ + M₂₂Yl), by walking from the load to the source.
-fn walk_to_source<V: Values + ?Sized, const N: usize>(
+pub(super) fn walk_to_source<V: Values + ?Sized, const N: usize>(
     circuit: &Circuit,
     values: &V,
-    omega: &[f64; N],
+    at: &impl Places<N>,
 ) -> (Lanes<N>, Lanes<N>) {
-    let mut walk = Walk::<N, 1>::from_load([(Lanes::ONE, load_lanes(&circuit.load, omega))]);
-    circuit.ports().rev().for_each(|port| walk.back_through(port, values, omega));
-    let loading = walk.at_source(0, source_lanes(&circuit.source, omega));
+    let mut walk = Walk::<N, 1>::from_load([(Lanes::ONE, load_lanes(&circuit.load, at))]);
+    circuit.ports().rev().for_each(|port| walk.back_through(port, values, at));
+    let loading = walk.at_source(0, source_lanes(&circuit.source, at));
     (walk.d, loading)
 }
 
-fn source_lanes<const N: usize>(source: &Source, omega: &[f64; N]) -> Lanes<N> {
-    Lanes::linear(source.resistance_ohm, source.inductance_h, omega)
+/// 1 + ZsYl: source EMF over load voltage without the network.
+pub(super) fn wire_lanes<const N: usize>(circuit: &Circuit, at: &impl Places<N>) -> Lanes<N> {
+    Lanes::ONE + source_lanes(&circuit.source, at) * load_lanes(&circuit.load, at)
 }
 
-fn load_lanes<const N: usize>(load: &Load, omega: &[f64; N]) -> Lanes<N> {
-    Lanes::linear(1.0 / load.resistance_ohm, load.capacitance_f, omega)
+fn source_lanes<const N: usize>(source: &Source, at: &impl Places<N>) -> Lanes<N> {
+    at.linear(source.resistance_ohm, source.inductance_h)
+}
+
+fn load_lanes<const N: usize>(load: &Load, at: &impl Places<N>) -> Lanes<N> {
+    at.linear(1.0 / load.resistance_ohm, load.capacitance_f)
 }
 
 fn lane(lanes: &Lanes<1>) -> Complex64 {

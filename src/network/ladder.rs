@@ -27,17 +27,32 @@ impl<const N: usize> Lanes<N> {
     pub(super) const ZERO: Self = Self { re: [0.0; N], im: [0.0; N] };
     pub(super) const ONE: Self = Self { re: [1.0; N], im: [0.0; N] };
 
-    fn new(lane: impl Fn(usize) -> (f64, f64)) -> Self {
+    pub(super) fn new(lane: impl Fn(usize) -> (f64, f64)) -> Self {
         let mut lanes = Self::ZERO;
         for k in 0..N {
             (lanes.re[k], lanes.im[k]) = lane(k);
         }
         lanes
     }
+}
 
-    /// `re` in all lanes, and `slope` times ω.
-    pub(super) fn linear(re: f64, slope: f64, omega: &[f64; N]) -> Self {
-        Self::new(|k| (re, slope * omega[k]))
+/// N complex frequencies s at which a response is looked at.
+pub(super) trait Places<const N: usize> {
+    /// `constant` + `slope`·s in each lane.
+    fn linear(&self, constant: f64, slope: f64) -> Lanes<N>;
+}
+
+/// jω: on the axis, where signals are.
+impl<const N: usize> Places<N> for [f64; N] {
+    fn linear(&self, constant: f64, slope: f64) -> Lanes<N> {
+        Lanes::new(|k| (constant, slope * self[k]))
+    }
+}
+
+/// Anywhere in the plane, where zeros and poles are.
+impl<const N: usize> Places<N> for Lanes<N> {
+    fn linear(&self, constant: f64, slope: f64) -> Lanes<N> {
+        Lanes::new(|k| (constant + slope * self.re[k], slope * self.im[k]))
     }
 }
 
@@ -92,30 +107,28 @@ impl<const N: usize> Ratio<N> {
         Self { n: self.n * other.n, d: Some(times(self.n, other.d) + times(other.n, self.d)) }
     }
 
-    fn of_part<V: Values + ?Sized>(index: usize, values: &V, omega: &[f64; N]) -> Self {
+    fn of_part<V: Values + ?Sized>(index: usize, values: &V, at: &impl Places<N>) -> Self {
         let part = values.value(index);
         let (value, r) = (part.value_si, part.series_resistance_ohm);
         match part.kind {
-            PartKind::Resistor | PartKind::Trimmer => Self { n: Lanes::linear(value, 0.0, omega), d: None },
-            PartKind::Capacitor => {
-                Self { n: Lanes::linear(1.0, value * r, omega), d: Some(Lanes::linear(0.0, value, omega)) }
-            }
+            PartKind::Resistor | PartKind::Trimmer => Self { n: at.linear(value, 0.0), d: None },
+            PartKind::Capacitor => Self { n: at.linear(1.0, value * r), d: Some(at.linear(0.0, value)) },
             PartKind::Coil => {
-                let winding = Lanes::linear(r, value, omega);
+                let winding = at.linear(r, value);
                 let own = part.self_capacitance_f;
-                let d = (own != 0.0).then(|| Lanes::ONE + Lanes::linear(0.0, own, omega) * winding);
+                let d = (own != 0.0).then(|| Lanes::ONE + at.linear(0.0, own) * winding);
                 Self { n: winding, d }
             }
         }
     }
 
-    fn of_branch<V: Values + ?Sized>(branch: &Branch, values: &V, omega: &[f64; N]) -> Self {
+    fn of_branch<V: Values + ?Sized>(branch: &Branch, values: &V, at: &impl Places<N>) -> Self {
         let all = |branches: &[Branch], join: fn(Self, Self) -> Self| {
-            let parts = branches.iter().map(|branch| Self::of_branch(branch, values, omega));
+            let parts = branches.iter().map(|branch| Self::of_branch(branch, values, at));
             parts.reduce(join).expect("not empty")
         };
         match branch {
-            Branch::Part(index) => Self::of_part(*index, values, omega),
+            Branch::Part(index) => Self::of_part(*index, values, at),
             Branch::Series { series } => all(series, Self::in_series),
             Branch::Parallel { parallel } => all(parallel, Self::in_parallel),
         }
@@ -178,22 +191,27 @@ impl<const N: usize, const W: usize> Walk<N, W> {
     }
 
     /// One two-port further towards the source.
-    pub(super) fn back_through<V: Values + ?Sized>(&mut self, port: &TwoPort, values: &V, omega: &[f64; N]) {
+    pub(super) fn back_through<V: Values + ?Sized>(
+        &mut self,
+        port: &TwoPort,
+        values: &V,
+        at: &impl Places<N>,
+    ) {
         match port {
             TwoPort::Series { series } => {
-                let z = Ratio::of_branch(series, values, omega);
+                let z = Ratio::of_branch(series, values, at);
                 self.waves.iter_mut().for_each(|wave| wave.through_series(&z));
                 self.d = times(self.d, z.d);
             }
             TwoPort::Shunt { shunt } => {
-                let z = Ratio::of_branch(shunt, values, omega);
+                let z = Ratio::of_branch(shunt, values, at);
                 self.waves.iter_mut().for_each(|wave| wave.through_shunt(&z));
                 self.d = self.d * z.n;
             }
             TwoPort::Beside { beside } => {
                 let matrices = beside.iter().map(|chain| {
                     let mut walk = Walk::<N, 2>::through();
-                    chain.iter().rev().for_each(|port| walk.back_through(port, values, omega));
+                    chain.iter().rev().for_each(|port| walk.back_through(port, values, at));
                     walk
                 });
                 let m = matrices.reduce(|a, b| a.beside(&b)).expect("at least one chain");

@@ -13,8 +13,9 @@ use rayon::prelude::*;
 
 use super::chance::Chance;
 use super::design::{BandPoint, Trim};
+use super::extremes::Lookout;
 use super::optimise::loss_db;
-use super::requirements::{FINE, Rule, Sample, Task, samples, with_extremes};
+use super::requirements::{Rule, Stretch, Task};
 use crate::network::{Circuit, PartValue};
 use crate::parts::REFERENCE_TEMPERATURE_C;
 
@@ -40,23 +41,18 @@ struct Build {
 
 /// Draws and judges `count` builds.
 pub fn judge(
-    circuit: &Circuit,
+    lookout: &Lookout,
     trims: &[Trim],
     task: &Task,
     temperature_c: (f64, f64),
     count: u32,
     seed: u64,
 ) -> Outcome {
-    let rules = samples(task, FINE);
-    let frequencies: Vec<f64> = rules.iter().map(|sample| sample.frequency_hz).collect();
     let builds: Vec<Build> = (0..count)
         .into_par_iter()
         .map(|index| {
-            let values = build(circuit, trims, temperature_c, seed, index);
-            let mut losses = vec![0.0; frequencies.len()];
-            losses_db(circuit, &values, &frequencies, &mut losses);
-            with_extremes(&rules, &mut losses);
-            Build::judged(&rules, &losses, task)
+            let values = build(lookout.circuit(), trims, temperature_c, seed, index);
+            Build::judged(lookout.stretches(), &lookout.worst_db(&values), task)
         })
         .collect();
     let column = |value: &dyn Fn(&Build) -> f64| builds.iter().map(value).collect::<Vec<f64>>();
@@ -117,16 +113,17 @@ pub fn losses_db(circuit: &Circuit, values: &[PartValue], frequencies_hz: &[f64]
 }
 
 impl Build {
-    fn judged(rules: &[Sample], losses: &[f64], task: &Task) -> Self {
+    /// From the loss at its worst over each stretch.
+    fn judged(stretches: &[Stretch], worst_db: &[f64], task: &Task) -> Self {
         let mut build = Self {
             meets: true,
             worst_miss: f64::NEG_INFINITY,
             reduction_db: vec![f64::INFINITY; task.orders.len()],
             loss_db: vec![0.0; task.keep.len()],
         };
-        for (sample, &loss_db) in rules.iter().zip(losses) {
-            build.worst_miss = build.worst_miss.max(sample.miss(loss_db));
-            match sample.rule {
+        for (stretch, &loss_db) in stretches.iter().zip(worst_db) {
+            build.worst_miss = build.worst_miss.max(stretch.rule.miss(loss_db));
+            match stretch.rule {
                 Rule::Reduce { order, .. } => {
                     build.reduction_db[order] = build.reduction_db[order].min(loss_db);
                 }

@@ -3,8 +3,9 @@
 use super::assembly::expanded;
 use super::builds::{self, losses_db};
 use super::design::{Builds, Design, KeepResult, Notched, Predicted, SectionSummary, Trim};
+use super::extremes::Lookout;
 use super::optimise::{Point, Problem};
-use super::requirements::{FINE, Rule, Task, samples, with_extremes};
+use super::requirements::{Rule, Task};
 use super::shelf::Listed;
 use super::trim::Adjustable;
 use crate::network::kinds::{Notch, Slot, SlotValue, kind_named};
@@ -310,7 +311,8 @@ pub fn design(
     seed: u64,
 ) -> (Design, f64) {
     let Finished { circuit, trims, sections, .. } = finished;
-    let outcome = builds::judge(&circuit, &trims, task, temperature_c, count, seed);
+    let lookout = Lookout::new(&circuit, task);
+    let outcome = builds::judge(&lookout, &trims, task, temperature_c, count, seed);
     let measured: Vec<f64> = task.orders.iter().map(|order| order.measured_hz).collect();
     let mut reductions = vec![0.0; measured.len()];
     losses_db(&circuit, &circuit.values(), &measured, &mut reductions);
@@ -327,16 +329,14 @@ pub fn design(
             target_db: Some(order.target_db),
         })
         .collect();
-    let rules = samples(task, FINE);
-    let frequencies: Vec<f64> = rules.iter().map(|sample| sample.frequency_hz).collect();
-    let mut losses = vec![0.0; frequencies.len()];
-    losses_db(&circuit, &circuit.values(), &frequencies, &mut losses);
-    with_extremes(&rules, &mut losses);
-    let kept = |wanted: usize| {
-        rules.iter().zip(&losses).filter_map(move |(sample, &loss)| match sample.rule {
-            Rule::Keep { band, .. } if band == wanted => Some(loss),
+    let (worst_db, least_db) = (lookout.worst_db(&circuit.values()), lookout.least_db(&circuit.values()));
+    let kept = |wanted: usize, losses_db: &[f64]| -> Vec<f64> {
+        let of_stretches = lookout.stretches().iter().zip(losses_db);
+        let of_band = of_stretches.filter_map(|(stretch, &loss_db)| match stretch.rule {
+            Rule::Keep { band, .. } if band == wanted => Some(loss_db),
             _ => None,
-        })
+        });
+        of_band.collect()
     };
     let lines_hz: Vec<f64> = task.orders.iter().map(|order| order.centre_hz).collect();
     let keep: Vec<KeepResult> = task
@@ -347,13 +347,15 @@ pub fn design(
             from_hz: band.from_hz,
             to_hz: band.to_hz,
             allowed_db: band.allowed_db,
-            loss_db: kept(index)
+            loss_db: kept(index, &worst_db)
+                .into_iter()
                 .fold(0.0, |most, loss| if loss.abs() > f64::abs(most) { loss } else { most }),
             loss_worst_db: outcome.loss_worst_db[index],
             judged_share: band.judged_share(&lines_hz, task.guard_hz),
         })
         .collect();
-    let flat_loss_db = (0..task.keep.len()).flat_map(kept).fold(f64::INFINITY, f64::min);
+    let flat_loss_db =
+        (0..task.keep.len()).flat_map(|band| kept(band, &least_db)).fold(f64::INFINITY, f64::min);
     let price = circuit.parts.iter().map(|part| part.price).sum::<Option<f64>>();
     let design = Design {
         met: outcome.meeting_pct >= ENOUGH_PCT,
@@ -372,7 +374,8 @@ pub fn design(
 
 /// The design with another number of builds.
 pub fn rejudged(mut design: Design, task: &Task, temperature_c: (f64, f64), count: u32, seed: u64) -> Design {
-    let outcome = builds::judge(&design.circuit, &design.trims, task, temperature_c, count, seed);
+    let lookout = Lookout::new(&design.circuit, task);
+    let outcome = builds::judge(&lookout, &design.trims, task, temperature_c, count, seed);
     for (order, &worst_db) in design.predicted.iter_mut().zip(&outcome.reduction_worst_db) {
         order.reduction_worst_db = worst_db;
     }

@@ -5,6 +5,7 @@ mod brief;
 mod builds;
 mod chance;
 mod design;
+mod extremes;
 mod finish;
 mod nearest;
 mod optimise;

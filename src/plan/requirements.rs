@@ -106,6 +106,20 @@ impl Task {
         let lines: Vec<f64> = self.orders.iter().map(|order| order.centre_hz).collect();
         band.judged(&lines, self.guard_hz)
     }
+
+    /// Every order's spread, and all judged parts of the keep bands, with what is asked there.
+    pub fn stretches(&self) -> Vec<Stretch> {
+        let lines = self.orders.iter().enumerate().map(|(index, order)| Stretch {
+            from_hz: order.centre_hz - order.spread_hz,
+            to_hz: order.centre_hz + order.spread_hz,
+            rule: Rule::Reduce { order: index, target_db: order.target_db },
+        });
+        let kept = self.keep.iter().enumerate().flat_map(|(index, band)| {
+            let rule = Rule::Keep { band: index, allowed_db: band.allowed_db };
+            self.judged(band).into_iter().map(move |(from_hz, to_hz)| Stretch { from_hz, to_hz, rule })
+        });
+        lines.chain(kept).collect()
+    }
 }
 
 /// Orders to be reduced and by how many decibels, by rising order.
@@ -169,6 +183,42 @@ pub enum Rule {
     },
 }
 
+impl Rule {
+    /// Decibels over what is allowed, or short of what is asked.
+    fn over_db(&self, loss_db: f64) -> f64 {
+        match *self {
+            Self::Reduce { target_db, .. } => target_db - loss_db,
+            Self::Keep { allowed_db, .. } => loss_db.abs() - allowed_db,
+        }
+    }
+
+    /// Units of miss: a tenth of the reduction asked for, a fifth of the loss
+    /// allowed. They only balance the search where both cannot be had; what is met
+    /// is met in any unit.
+    fn scale_db(&self) -> f64 {
+        match *self {
+            Self::Reduce { target_db, .. } => (target_db / 10.0).max(1.0),
+            Self::Keep { allowed_db, .. } => allowed_db / 5.0,
+        }
+    }
+
+    /// Miss in units: positive where the rule is broken.
+    pub fn miss(&self, loss_db: f64) -> f64 {
+        self.over_db(loss_db) / self.scale_db()
+    }
+}
+
+/// A range of frequencies over the whole of which one thing is asked.
+#[derive(Debug, Clone, Copy, PartialEq)]
+pub struct Stretch {
+    /// Lower edge.
+    pub from_hz: f64,
+    /// Upper edge.
+    pub to_hz: f64,
+    /// What.
+    pub rule: Rule,
+}
+
 /// One frequency at which something is asked.
 #[derive(Debug, Clone, Copy, PartialEq)]
 pub struct Sample {
@@ -178,17 +228,12 @@ pub struct Sample {
     pub rule: Rule,
     /// Decibels that count as one unit of miss.
     pub scale_db: f64,
-    /// Samples of one number lie evenly side by side in one stretch.
-    pub stretch: usize,
 }
 
 impl Sample {
     /// Miss in units of `scale_db`: positive where the rule is broken.
     pub fn miss(&self, loss_db: f64) -> f64 {
-        match self.rule {
-            Rule::Reduce { target_db, .. } => (target_db - loss_db) / self.scale_db,
-            Rule::Keep { allowed_db, .. } => (loss_db.abs() - allowed_db) / self.scale_db,
-        }
+        self.rule.over_db(loss_db) / self.scale_db
     }
 
     /// Slope of [`Sample::miss`] against the loss.
@@ -211,22 +256,8 @@ pub struct Density {
     pub least: usize,
 }
 
-/// For the search.
+/// For the search; what is told to the user is read over whole stretches.
 pub const COARSE: Density = Density { per_line: 3, per_octave: 3.0, least: 3 };
-/// For what is told to the user.
-pub const FINE: Density = Density { per_line: 9, per_octave: 10.0, least: 7 };
-
-/// Units of miss: a tenth of the reduction asked for, a fifth of the loss
-/// allowed. They only balance the search where both cannot be had; what is met
-/// is met in any unit.
-fn reduce_scale_db(target_db: f64) -> f64 {
-    (target_db / 10.0).max(1.0)
-}
-
-fn keep_scale_db(allowed_db: f64) -> f64 {
-    allowed_db / 5.0
-}
-
 /// What the search holds to first where not all can be had.
 #[derive(Debug, Clone, Copy, PartialEq, Eq)]
 pub enum Lean {
@@ -271,54 +302,22 @@ impl Lean {
 
 /// All rules of a task at their frequencies.
 pub fn samples(task: &Task, density: Density) -> Vec<Sample> {
-    let mut samples = Vec::new();
-    let mut stretch = 0;
-    for (index, order) in task.orders.iter().enumerate() {
-        stretch += 1;
-        for point in 0..density.per_line {
-            let across = 2.0 * point as f64 / (density.per_line - 1) as f64 - 1.0;
-            samples.push(Sample {
-                frequency_hz: order.centre_hz + across * order.spread_hz,
-                rule: Rule::Reduce { order: index, target_db: order.target_db },
-                scale_db: reduce_scale_db(order.target_db),
-                stretch,
-            });
-        }
-    }
-    for (index, band) in task.keep.iter().enumerate() {
-        for (from_hz, to_hz) in task.judged(band) {
-            stretch += 1;
-            for frequency_hz in interval_points(from_hz, to_hz, density) {
-                samples.push(Sample {
-                    frequency_hz,
-                    rule: Rule::Keep { band: index, allowed_db: band.allowed_db },
-                    scale_db: keep_scale_db(band.allowed_db),
-                    stretch,
-                });
-            }
-        }
-    }
-    samples
+    let sampled = |stretch: Stretch| {
+        let Stretch { from_hz, to_hz, rule } = stretch;
+        let points = match rule {
+            Rule::Reduce { .. } => line_points(from_hz, to_hz, density),
+            Rule::Keep { .. } => interval_points(from_hz, to_hz, density),
+        };
+        points.into_iter().map(move |frequency_hz| Sample { frequency_hz, rule, scale_db: rule.scale_db() })
+    };
+    task.stretches().into_iter().flat_map(sampled).collect()
 }
 
-/// Losses at the samples, each that is an extreme among its neighbours replaced by the
-/// extreme of the parabola through the three: what peaks between samples is seen.
-pub fn with_extremes(samples: &[Sample], losses_db: &mut [f64]) {
-    let read = losses_db.to_vec();
-    for middle in 1..samples.len().max(1) - 1 {
-        let [left, right] = [middle - 1, middle + 1];
-        if samples[left].stretch == samples[right].stretch {
-            losses_db[middle] = extreme(read[left], read[middle], read[right]);
-        }
-    }
-}
-
-/// The extreme of the parabola through three values, where the middle one is the largest
-/// or the smallest; else the middle one.
-fn extreme(left: f64, middle: f64, right: f64) -> f64 {
-    let (slope, bend) = (0.5 * (right - left), left - 2.0 * middle + right);
-    let is_extreme = (middle - left) * (middle - right) > 0.0;
-    if is_extreme { middle - slope * slope / (2.0 * bend) } else { middle }
+/// Points over a line's spread, evenly.
+fn line_points(from_hz: f64, to_hz: f64, density: Density) -> Vec<f64> {
+    let (middle_hz, half_hz) = (0.5 * (from_hz + to_hz), 0.5 * (to_hz - from_hz));
+    let across = |point: usize| 2.0 * point as f64 / (density.per_line - 1) as f64 - 1.0;
+    (0..density.per_line).map(|point| middle_hz + across(point) * half_hz).collect()
 }
 
 /// Points from edge to edge: evenly by ratio; evenly by frequency, 0 Hz itself
@@ -338,31 +337,4 @@ fn interval_points(from_hz: f64, to_hz: f64, density: Density) -> Vec<f64> {
             }
         })
         .collect()
-}
-
-#[cfg(test)]
-mod tests {
-    use super::*;
-
-    #[test]
-    fn a_peak_between_samples_is_seen() {
-        let rule = Rule::Keep { band: 0, allowed_db: 1.0 };
-        let at = |stretch| Sample { frequency_hz: 1.0, rule, scale_db: 1.0, stretch };
-        let ripple = |n: u32| (0.7 * f64::from(n) - 0.2).cos();
-        let samples: Vec<Sample> = (0..9).map(|_| at(1)).collect();
-        let mut losses: Vec<f64> = (0..9).map(ripple).collect();
-        with_extremes(&samples, &mut losses);
-        let most = losses.iter().copied().fold(f64::MIN, f64::max);
-        let least = losses.iter().copied().fold(f64::MAX, f64::min);
-        assert!((most - 1.0).abs() < 0.02 && (least + 1.0).abs() < 0.02, "{least} to {most}");
-    }
-
-    #[test]
-    fn what_lies_on_either_side_of_a_guard_is_not_joined() {
-        let rule = Rule::Keep { band: 0, allowed_db: 1.0 };
-        let samples = [1, 1, 2, 2].map(|stretch| Sample { frequency_hz: 1.0, rule, scale_db: 1.0, stretch });
-        let mut losses = [0.0, 3.0, 2.9, 0.0];
-        with_extremes(&samples, &mut losses);
-        assert_eq!(losses, [0.0, 3.0, 2.9, 0.0]);
-    }
 }
