@@ -13,6 +13,7 @@ mod findings;
 mod folding;
 mod gather;
 mod kalman;
+mod levels;
 mod likeliest;
 mod neighbours;
 mod orders;
