@@ -41,11 +41,13 @@ pub(super) struct ChannelSurvey {
 pub(super) struct Surveyed {
     /// Largest absolute sample.
     pub peak: f64,
+    /// Largest distance of a sample from the mean.
+    pub peak_about_mean: f64,
     /// Mean sample.
     pub mean: f64,
     /// RMS about the mean.
     pub rms: f64,
-    /// Samples in flat runs at the extremes.
+    /// Samples cut off at the extremes.
     pub clipped: u64,
     /// Power over the local noise, by segment and bin.
     pub ratios: Vec<Vec<f32>>,
@@ -113,6 +115,7 @@ impl ChannelSurvey {
         let (mean, rms) = self.levels.mean_and_rms();
         Surveyed {
             peak: self.levels.peak(),
+            peak_about_mean: self.levels.peak_about_mean(),
             mean,
             rms,
             clipped: self.levels.clipped(),
