@@ -6,6 +6,7 @@ use super::comb::Candidate;
 use super::company::{APART_HOP_S, are_shared, usual_beside};
 use super::findings::TrackPoint;
 use super::gather::{Gather, Gathered};
+use super::level_track::LevelOverTime;
 use super::likeliest::reach_hz;
 use super::orders::OrderMeter;
 use super::reference::{mean_frequency_hz, motion, reference_frequency_hz, reference_track};
@@ -86,6 +87,7 @@ pub(super) struct Second {
     pub spectrum: Spectrum,
     pub tracked: Option<Tracked>,
     pub verdict: Option<Verdict>,
+    pub level: LevelOverTime,
 }
 
 pub(super) fn second_pass(
@@ -122,7 +124,10 @@ pub(super) fn second_pass(
             Company::Alone,
         )
     });
-    Ok(Second { reference, spectrum: spectrum.finish(), tracked, verdict })
+    let level = tracked
+        .as_ref()
+        .map_or_else(LevelOverTime::default, |tracked| LevelOverTime::measure(&cells, tracked));
+    Ok(Second { reference, spectrum: spectrum.finish(), tracked, verdict, level })
 }
 
 /// The offset from a first reference by the orders that another supply does not have, in blocks
