@@ -64,8 +64,9 @@ pub(super) fn merged(mut done: Vec<One>) -> AnalysisRun {
     let mains = merged_mains(&done, base, &mut notes);
     let harmonics = merged_harmonics(&done, base, mains.frequency_hz.unwrap_or_default());
     let clipped = captures.iter().any(|capture| capture.clipped_samples > 0);
-    if let Some(note) = done[base].level.note() {
-        notes.push(note);
+    for one in done.iter().filter(|one| one.hum.is_some()) {
+        let note = one.level.note();
+        notes.extend(note.map(|note| if several { format!("{}: {note}", one.summary.path) } else { note }));
     }
     notes.extend(power_note(&harmonics));
     let spectrum = std::mem::take(&mut done[0].spectrum);

@@ -39,7 +39,7 @@ mod window;
 
 pub use analyse::{AnalysisRun, analyse};
 pub use causes::BENCH_CAPTURES;
-pub use converter::{Converter, FilterNeed, Needed, SHORT_OF_HEADROOM_DB, WhyNeeded};
+pub use converter::{Converter, FilterNeed, HumOnConverter, Needed, SHORT_OF_HEADROOM_DB, WhyNeeded};
 pub use findings::*;
 pub use orders::{OrderLevel, OrderMeter};
 pub use phase::PhaseTrack;

@@ -235,3 +235,84 @@ fn harmonics(analysis: &Analysis) -> String {
     text.push('\n');
     text
 }
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+    use crate::analysis::{
+        CaptureHum, CaptureSummary, Cause, Converter, FilterNeed, Harmonic, HumOnConverter, LevelChange,
+        Mains, Needed, WhyNeeded,
+    };
+
+    fn capture(path: &str, level_dbfs: Option<f64>) -> CaptureSummary {
+        let level =
+            |level_dbfs| CaptureLevel { order: 1, level_dbfs, level_se_db: 0.01, over_floor_db: 60.0 };
+        let needs =
+            |answer, why, statement: &str| FilterNeed { answer, why, statement: statement.to_owned() };
+        let filter_needed = match level_dbfs {
+            Some(_) => needs(Needed::No, WhyNeeded::HeadroomInHand, "no: headroom is not short (14.0 dB)"),
+            None => needs(Needed::No, WhyNeeded::NoHum, "no: no hum was found"),
+        };
+        CaptureSummary {
+            path: path.to_owned(),
+            hum: level_dbfs.map(|db| CaptureHum { frequency_hz: 50.0, levels: vec![level(db)] }),
+            converter: Some(Converter {
+                peak_dbfs: -14.0,
+                headroom_db: 14.0,
+                crest_factor_db: 9.0,
+                hum: level_dbfs.map(|_| HumOnConverter {
+                    peak: 0.1,
+                    share_of_peak: 0.5,
+                    gain_least_db: 3.0,
+                    gain_most_db: 6.0,
+                    bits_least: 0.5,
+                    bits_most: 1.0,
+                }),
+                filter_needed,
+            }),
+            ..CaptureSummary::default()
+        }
+    }
+
+    fn analysis(second_dbfs: Option<f64>) -> Analysis {
+        Analysis {
+            captures: vec![capture("sensor.wav", Some(-30.0)), capture("resistor.wav", second_dbfs)],
+            mains: Mains { found: true, frequency_hz: Some(50.0), confidence: 1.0, ..Mains::default() },
+            harmonics: vec![Harmonic {
+                order: 1,
+                frequency_hz: 50.0,
+                level_dbfs: -31.0,
+                ..Harmonic::default()
+            }],
+            level_changes: vec![LevelChange {
+                time_s: 12.3,
+                over_s: 0.0,
+                order: 1,
+                from_dbfs: -52.1,
+                to_dbfs: -38.0,
+                orders: vec![1],
+            }],
+            causes: vec![Cause { tell_apart: "Turn the cable. ".repeat(20), ..Cause::default() }],
+            ..Analysis::default()
+        }
+    }
+
+    #[test]
+    fn two_recordings_stand_side_by_side_with_their_difference() {
+        let shown = text(&analysis(Some(-42.0)));
+        assert!(shown.contains("-30.0 dBFS   -42.0 dBFS  -12.0 dB"), "{shown}");
+        assert!(text(&analysis(None)).contains("no hum"), "{shown}");
+    }
+
+    #[test]
+    fn the_answer_stands_first_and_no_line_is_longer_than_80_columns() {
+        let shown = text(&analysis(Some(-42.0)));
+        let mut lines = shown.lines();
+        assert!(lines.next().is_some_and(|line| line.starts_with("Hum found")), "{shown}");
+        assert!(
+            lines.next().is_some_and(|line| line.starts_with("Is a filter before the converter needed? No"))
+        );
+        assert!(shown.contains("  Change      at 12.3 s order 1 goes from -52.1 to -38.0 dBFS"), "{shown}");
+        assert!(shown.lines().all(|line| line.chars().count() <= 80), "{shown}");
+    }
+}
