@@ -113,6 +113,10 @@ fn summaries(done: &[One]) -> Vec<CaptureSummary> {
 
 fn summary(one: &One, orders: &[u32]) -> CaptureSummary {
     let mut summary = one.summary.clone();
+    if let Some(frequency_hz) = one.left_out_hz {
+        summary.hum = Some(CaptureHum { frequency_hz, levels: Vec::new() });
+        return summary;
+    }
     let Some(hum) = &one.hum else {
         summary.converter = Some(Converter::of(&summary, None, &one.spectrum));
         return summary;

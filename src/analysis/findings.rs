@@ -67,7 +67,8 @@ pub struct CaptureSummary {
     /// The hum in this capture alone; `None` where none counts.
     #[serde(default)]
     pub hum: Option<CaptureHum>,
-    /// What the signal does to the converter, and whether a filter before it is needed.
+    /// What the signal does to the converter, and whether a filter before it is needed;
+    /// `None` where the capture is left out of the account.
     #[serde(default)]
     pub converter: Option<Converter>,
     /// Weighted as hearing is; `None` where no hum was found, and under 8 kHz.
@@ -80,7 +81,8 @@ pub struct CaptureSummary {
 pub struct CaptureHum {
     /// Mean frequency of the fundamental.
     pub frequency_hz: f64,
-    /// Every order that any of the captures has over the noise.
+    /// Every order that any of the captures has over the noise; none where the hum is another
+    /// supply's and the capture is left out of the account.
     pub levels: Vec<CaptureLevel>,
 }
 
@@ -163,9 +165,10 @@ pub struct TrackPoint {
 pub struct LevelPoint {
     /// Middle of the window, seconds from the start.
     pub time_s: f64,
-    /// Power of the hum's strong orders together (those within 26 dB of the strongest, eight
-    /// at most), taken along the phase track, so that a drift of the frequency is no change
-    /// of level. Where the hum is gone, what noise reads.
+    /// Power of the hum's strong orders together (those that keep their phase along the track,
+    /// within 26 dB of the strongest, eight at most). Taken along the phase track, so that a
+    /// drift of the frequency is no change of level; programme near a line still adds to it.
+    /// Where the hum is gone, what noise reads.
     pub level_dbfs: f64,
 }
 
@@ -206,7 +209,7 @@ pub struct Cause {
     pub look_first: String,
     /// What to try first.
     pub first_cure: String,
-    /// What to measure to tell this cause from the next one in the list.
+    /// What to measure to tell this cause from the next of its kind in the list.
     #[serde(default)]
     pub tell_apart: String,
 }

@@ -4,7 +4,7 @@ use super::args::Analyse;
 use super::error::CliError;
 use super::table::{Table, wrapped};
 use super::{Ended, job, print_answer, single_file};
-use crate::analysis::{Analysis, CaptureLevel};
+use crate::analysis::{Analysis, CaptureLevel, CaptureSummary};
 use crate::plan::LineBrief;
 use crate::report;
 
@@ -168,17 +168,18 @@ fn side_by_side(analysis: &Analysis) -> String {
     }
     let mut table = Table::new(&headings.iter().map(String::as_str).collect::<Vec<_>>());
     for harmonic in analysis.harmonics.iter().take(SHOWN_HARMONICS) {
-        let levels: Vec<Option<&CaptureLevel>> = captures
-            .iter()
-            .map(|capture| capture.hum.as_ref()?.levels.iter().find(|level| level.order == harmonic.order))
-            .collect();
+        let of_order = |capture: &CaptureSummary| {
+            let levels = &capture.hum.as_ref()?.levels;
+            levels.iter().find(|level| level.order == harmonic.order).cloned()
+        };
+        let levels: Vec<Option<CaptureLevel>> = captures.iter().map(of_order).collect();
         let mut row = vec![harmonic.order.to_string()];
-        row.extend(levels.iter().map(|level| match level {
-            None => "no hum".to_owned(),
+        row.extend(levels.iter().zip(captures).map(|(level, capture)| match level {
+            None => missing(capture).to_owned(),
             Some(level) if level.over_floor_db < CLEAR_DB => format!("< {:.1} dBFS", level.level_dbfs),
             Some(level) => format!("{:.1} dBFS", level.level_dbfs),
         }));
-        if let [first, second] = levels[..] {
+        if let [first, second] = &levels[..] {
             row.push(match (first, second) {
                 (Some(a), Some(b)) => format!("{:+.1} dB", b.level_dbfs - a.level_dbfs),
                 _ => "–".to_owned(),
@@ -187,6 +188,15 @@ fn side_by_side(analysis: &Analysis) -> String {
         table.row(row);
     }
     format!("{}\n", table.lines())
+}
+
+/// Why a capture has no level of an order.
+fn missing(capture: &CaptureSummary) -> &'static str {
+    match &capture.hum {
+        None => "no hum",
+        Some(hum) if hum.levels.is_empty() => "left out",
+        Some(_) => "–",
+    }
 }
 
 /// The changes of the level.
@@ -240,8 +250,8 @@ fn harmonics(analysis: &Analysis) -> String {
 mod tests {
     use super::*;
     use crate::analysis::{
-        CaptureHum, CaptureSummary, Cause, Converter, FilterNeed, Harmonic, HumOnConverter, LevelChange,
-        Mains, Needed, WhyNeeded,
+        CaptureHum, Cause, Converter, FilterNeed, Harmonic, HumOnConverter, LevelChange, Mains, Needed,
+        WhyNeeded,
     };
 
     fn capture(path: &str, level_dbfs: Option<f64>) -> CaptureSummary {

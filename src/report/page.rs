@@ -154,7 +154,11 @@ fn found(material: &Material) -> Vec<Fact> {
     facts.extend(
         captures.clone().filter_map(|c| c.converter.as_ref()).map(|c| fact("Converter", converter(c))),
     );
-    facts.extend(captures.filter_map(|c| c.weighted.as_ref()).map(|w| fact("Weighted", weighted(w))));
+    facts.extend(
+        captures
+            .filter_map(|c| c.weighted.as_ref())
+            .map(|w| fact("Weighted", weighted(w).replace(" -", " \u{2212}"))),
+    );
     if let Some(frequency) = mains.frequency_hz {
         let error = mains
             .frequency_se_hz

@@ -228,7 +228,11 @@ pub(super) fn likely_causes(signs: &Signs) -> Vec<Cause> {
         })
         .collect();
     pointed.sort_by(|a, b| b.1.total_cmp(&a.1));
-    let next = |i: usize| pointed.get(i + 1).or_else(|| (i > 0).then(|| &pointed[0]));
+    // What speaks of something else is no alternative.
+    let next = |i: usize| {
+        let mut others = pointed[i + 1..].iter().chain(&pointed[..i]);
+        others.find(|(other, ..)| other.kind == pointed[i].0.kind)
+    };
     let mut causes: Vec<Cause> = (0..pointed.len())
         .map(|i| {
             let (pattern, score, evidence) = &pointed[i];
@@ -248,7 +252,7 @@ pub(super) fn likely_causes(signs: &Signs) -> Vec<Cause> {
     causes
 }
 
-/// What to measure to tell a cause from the one after it in the list.
+/// What to measure to tell a cause from the next of its kind in the list.
 fn told_apart(pattern: &Pattern, next: Option<&Pattern>, is_first: bool) -> String {
     let mut text = capitalised(pattern.test);
     if let Some(next) = next {

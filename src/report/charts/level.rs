@@ -37,7 +37,7 @@ pub(super) fn chart(material: &Material, size: Size) -> Chart {
 fn caption(material: &Material) -> String {
     let mut caption =
         "The strong orders together, taken along the frequency track: a drift of the frequency is no \
-                       change of level here."
+                       change of level here, while what else sounds close to a line adds to it for its time."
             .to_owned();
     if let [first, ..] = &material.analysis.level_changes[..] {
         caption += &format!(
