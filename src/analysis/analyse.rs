@@ -12,7 +12,8 @@ use super::folding::{hidden_supplies, is_half_rate};
 use super::level_track::LevelOverTime;
 use super::likeliest::likeliest;
 use super::orders::OrderLevel;
-use super::passes::{read_channel, second_pass, survey, third_pass, tracked_apart};
+use super::passes::{Followed, second_pass, survey, third_pass, tracked_apart};
+use super::reading::read_channel;
 use super::reference::mean_frequency_hz;
 use super::spectrum::{Spectrum, SpectrumMeter};
 use super::spread::Wander;
@@ -177,6 +178,7 @@ fn analyse_one(
     let besides = candidates_besides(&survey, rate_hz, best);
     let mut reference = seen.reference;
     let mut tracked = tracked;
+    let mut cells = Some(&seen.cells);
     let main_hz = mean_frequency_hz(&reference, &tracked, duration_s);
     if let Some(other) = usual_beside(&besides, main_hz).next() {
         // A first track that the other shakes is no reference: its mean is, or the survey's path.
@@ -186,11 +188,13 @@ fn analyse_one(
             reference.clone()
         };
         if let Some(apart) = tracked_apart(capture, channel, &first, &verdict, other.mean_hz())? {
-            tracked = Tracked { lines: tracked.lines, ..apart };
+            tracked = Tracked { orders: tracked.orders, lines: tracked.lines, ..apart };
             reference = first;
+            cells = None;
         }
     }
-    let mut hum = third_pass(capture, channel, &reference, &tracked, &verdict, &besides, &mut |p| {
+    let followed = Followed { reference: &reference, tracked: &tracked, cells };
+    let mut hum = third_pass(capture, channel, &followed, &verdict, &besides, &mut |p| {
         progress((2.0 + p) / 3.0);
     })?;
     if let Some(other_hz) = verdict.ambiguous {
