@@ -9,7 +9,7 @@ use std::process::Output;
 use assert_cmd::Command;
 use serde_json::Value;
 
-const FILES: [&str; 13] = [
+const FILES: [&str; 14] = [
     "analysis.yaml",
     "plan.yaml",
     "netlist.txt",
@@ -21,6 +21,7 @@ const FILES: [&str; 13] = [
     "spectrum.svg",
     "response.svg",
     "track.svg",
+    "level.svg",
     "harmonics.svg",
     "schematic.svg",
 ];
@@ -202,7 +203,10 @@ fn the_json_holds_every_key_of_the_contract() {
             &["order", "frequency_hz", "level_dbfs", "rms_v", "phase_deg", "over_floor_db"],
         ),
         ("/analysis/track/0", &["time_s", "frequency_hz", "se_hz"]),
-        ("/analysis/causes/0", &["cause", "evidence", "first_cure"]),
+        (
+            "/analysis/causes/0",
+            &["cause", "evidence", "first_cure", "confidence", "look_first", "tell_apart"],
+        ),
         ("/analysis", &["other_supplies"]),
         (
             "/plan",

@@ -37,13 +37,10 @@ fn findings(nominal_hz: f64, levels_dbfs: &[(u32, f64)]) -> Analysis {
                 rms_v: None,
                 phase_deg: 0.0,
                 over_floor_db: 60.0,
+                ..Harmonic::default()
             })
             .collect(),
-        track: Vec::new(),
-        causes: Vec::new(),
-        other_supplies: Vec::new(),
-        folding: Vec::new(),
-        notes: Vec::new(),
+        ..Analysis::default()
     }
 }
 

@@ -314,7 +314,7 @@ fn every_chart_is_sound_xml_with_its_texts_inside_the_picture() {
         written(name, &findings);
         let charts = own_charts(&findings);
         let files: Vec<&str> = charts.iter().map(|(file, _)| *file).collect();
-        assert_eq!(files, ["spectrum.svg", "response.svg", "track.svg", "harmonics.svg"]);
+        assert_eq!(files, ["spectrum.svg", "response.svg", "track.svg", "level.svg", "harmonics.svg"]);
         for (file, svg) in charts {
             assert_texts_lie_inside(&format!("{name}/{file}"), &svg);
         }

@@ -92,6 +92,7 @@ fn analysis(capture: &dyn Capture, channel: usize, orders: &[u32]) -> Analysis {
         rms_v: None,
         phase_deg: 0.0,
         over_floor_db: 80.0,
+        ..Harmonic::default()
     });
     Analysis {
         captures: vec![CaptureSummary {
@@ -102,9 +103,7 @@ fn analysis(capture: &dyn Capture, channel: usize, orders: &[u32]) -> Analysis {
             duration_s: format.duration_s(),
             full_scale_v: None,
             clipped_samples: 0,
-            peak: 0.0,
-            mean: 0.0,
-            rms: 0.0,
+            ..CaptureSummary::default()
         }],
         mains: Mains {
             found: !orders.is_empty(),
@@ -116,11 +115,7 @@ fn analysis(capture: &dyn Capture, channel: usize, orders: &[u32]) -> Analysis {
             confidence: 1.0,
         },
         harmonics: harmonics.collect(),
-        track: Vec::new(),
-        causes: Vec::new(),
-        other_supplies: Vec::new(),
-        folding: Vec::new(),
-        notes: Vec::new(),
+        ..Analysis::default()
     }
 }
 

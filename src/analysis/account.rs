@@ -2,12 +2,14 @@
 
 use super::agreement::{Reading, of_one_supply};
 use super::analyse::{AnalysisRun, Hum, One};
-use super::causes::likely_causes;
-use super::findings::{Analysis, CaptureSummary, Harmonic, Mains};
+use super::causes::{Signs, likely_causes};
+use super::converter::{Converter, HumHeard};
+use super::findings::{Analysis, CaptureHum, CaptureLevel, CaptureSummary, Harmonic, Mains};
 use super::folding::folded_harmonics;
 use super::orders::OrderLevel;
 use super::spread::{Wander, spread_about};
 use super::supplies::nearest_supply;
+use super::weighted::Weighted;
 
 /// Takes the hum out of captures of another supply than most are of.
 fn leave_out_other_supplies(done: &mut [One]) {
@@ -48,7 +50,7 @@ pub(super) fn merged(mut done: Vec<One>) -> AnalysisRun {
             notes.push(left_out_note(one));
         }
     }
-    let captures: Vec<CaptureSummary> = done.iter().map(|one| one.summary.clone()).collect();
+    let captures = summaries(&done);
     let Some(base) = base else {
         let confidence = done.iter().map(|one| one.confidence).fold(0.0, f64::max);
         return AnalysisRun {
@@ -62,16 +64,33 @@ pub(super) fn merged(mut done: Vec<One>) -> AnalysisRun {
     let mains = merged_mains(&done, base, &mut notes);
     let harmonics = merged_harmonics(&done, base, mains.frequency_hz.unwrap_or_default());
     let clipped = captures.iter().any(|capture| capture.clipped_samples > 0);
+    for one in done.iter().filter(|one| one.hum.is_some()) {
+        let note = one.level.note();
+        notes.extend(note.map(|note| if several { format!("{}: {note}", one.summary.path) } else { note }));
+    }
+    notes.extend(power_note(&harmonics));
     let spectrum = std::mem::take(&mut done[0].spectrum);
+    let level = std::mem::take(&mut done[base].level);
+    let duration_s = captures.iter().map(|capture| capture.duration_s).fold(0.0, f64::max);
     let hum = done[base].hum.take().expect("the base has hum");
     AnalysisRun {
         analysis: Analysis {
-            causes: likely_causes(&harmonics, clipped, rate_hz),
+            causes: likely_causes(&Signs {
+                mains: &mains,
+                harmonics: &harmonics,
+                changes: &level.changes,
+                other_supplies: &hum.other_supplies,
+                clipped,
+                rate_hz,
+                duration_s,
+            }),
             folding: folded_harmonics(hum.frequency_hz, rate_hz),
             captures,
             mains,
             harmonics,
             track: hum.track,
+            level_track: level.points,
+            level_changes: level.changes,
             other_supplies: hum.other_supplies,
             notes,
         },
@@ -82,25 +101,60 @@ pub(super) fn merged(mut done: Vec<One>) -> AnalysisRun {
 }
 
 fn nothing(captures: Vec<CaptureSummary>, confidence: f64, notes: Vec<String>) -> Analysis {
-    let mains = Mains {
-        found: false,
-        nominal_hz: None,
-        frequency_hz: None,
-        frequency_se_hz: None,
-        spread_hz: None,
-        spread_floor_hz: None,
-        confidence,
-    };
-    Analysis {
-        captures,
-        mains,
-        harmonics: Vec::new(),
-        track: Vec::new(),
-        causes: Vec::new(),
-        other_supplies: Vec::new(),
-        folding: Vec::new(),
-        notes,
+    let mains = Mains { confidence, ..Mains::default() };
+    Analysis { captures, mains, notes, ..Analysis::default() }
+}
+
+/// What is said of each recording, with the hum in it alone and what that does to the converter.
+fn summaries(done: &[One]) -> Vec<CaptureSummary> {
+    let orders = listed_orders(done);
+    done.iter().map(|one| summary(one, &orders)).collect()
+}
+
+fn summary(one: &One, orders: &[u32]) -> CaptureSummary {
+    let mut summary = one.summary.clone();
+    if let Some(frequency_hz) = one.left_out_hz {
+        summary.hum = Some(CaptureHum { frequency_hz, levels: Vec::new() });
+        return summary;
     }
+    let Some(hum) = &one.hum else {
+        summary.converter = Some(Converter::of(&summary, None, &one.spectrum));
+        return summary;
+    };
+    let levels: Vec<&OrderLevel> =
+        hum.levels.iter().filter(|level| hum.listed.contains(&level.order)).collect();
+    let lines: Vec<(f64, f64)> = levels.iter().map(|level| (level.frequency_hz, level.level_dbfs)).collect();
+    let wander_hz = hum.wander.as_ref().map_or(0.0, |wander| wander.furthest_hz(hum.frequency_hz));
+    let rate_hz = f64::from(summary.sample_rate_hz);
+    summary.weighted = Weighted::of(&lines, hum.frequency_hz, wander_hz, &one.spectrum, rate_hz);
+    let heard = HumHeard { levels, loudest_db: one.level.loudest_db };
+    summary.converter = Some(Converter::of(&summary, Some(&heard), &one.spectrum));
+    let here = |level: &&OrderLevel| orders.contains(&level.order);
+    let level = |level: &OrderLevel| CaptureLevel {
+        order: level.order,
+        level_dbfs: level.level_dbfs,
+        level_se_db: level.level_se_db,
+        over_floor_db: level.over_floor_db,
+    };
+    let levels = hum.levels.iter().filter(here).map(level).collect();
+    summary.hum = Some(CaptureHum { frequency_hz: hum.frequency_hz, levels });
+    summary
+}
+
+/// Difference from which the mean power is told beside the mean amplitude, decibels.
+const POWER_APART_DB: f64 = 0.5;
+
+/// That the hum's power is more than its mean amplitude says, where it is.
+fn power_note(harmonics: &[Harmonic]) -> Option<String> {
+    let strongest = harmonics.iter().max_by(|a, b| a.level_dbfs.total_cmp(&b.level_dbfs))?;
+    let power_dbfs = strongest.mean_power_dbfs?;
+    (power_dbfs - strongest.level_dbfs >= POWER_APART_DB).then(|| {
+        format!(
+            "levels are of the mean amplitude; order {} swings, and its mean power is {power_dbfs:.1} dBFS where its mean \
+             amplitude is {:.1} dBFS",
+            strongest.order, strongest.level_dbfs
+        )
+    })
 }
 
 fn merged_mains(done: &[One], base: usize, notes: &mut Vec<String>) -> Mains {
@@ -164,10 +218,17 @@ fn stray_note(frequency_hz: f64) -> Option<String> {
 
 fn merged_harmonics(done: &[One], base: usize, mean_hz: f64) -> Vec<Harmonic> {
     let hums: Vec<(&One, &Hum)> = done.iter().filter_map(|one| Some((one, one.hum.as_ref()?))).collect();
-    let mut orders: Vec<u32> = hums.iter().flat_map(|(_, hum)| hum.listed.iter().copied()).collect();
+    let orders = listed_orders(done).into_iter();
+    orders.filter_map(|order| merged_harmonic(&hums, done, base, order, mean_hz)).collect()
+}
+
+/// Every order that any of the captures has over the noise.
+fn listed_orders(done: &[One]) -> Vec<u32> {
+    let hums = done.iter().filter_map(|one| one.hum.as_ref());
+    let mut orders: Vec<u32> = hums.flat_map(|hum| hum.listed.iter().copied()).collect();
     orders.sort_unstable();
     orders.dedup();
-    orders.into_iter().filter_map(|order| merged_harmonic(&hums, done, base, order, mean_hz)).collect()
+    orders
 }
 
 /// Mean power over the captures that reach so high, weighted by their length.
@@ -197,8 +258,19 @@ fn merged_harmonic(
         order,
         frequency_hz: f64::from(order) * mean_hz,
         level_dbfs,
+        level_se_db: Some(merged_error_db(&read)),
+        mean_power_dbfs: Some(power(|level| level.mean_power_dbfs)),
         rms_v: full_scale_v.map(|volts| volts / 2f64.sqrt() * 10f64.powf(level_dbfs / 20.0)),
         phase_deg: first.phase_deg,
         over_floor_db: power(|level| level.over_floor_db),
     })
+}
+
+/// Standard error of the mean power over the captures, weighted by their length, in decibels
+/// of it: errors of the noise alone, each independent of the others.
+fn merged_error_db(read: &[(f64, &OrderLevel)]) -> f64 {
+    let power = |level: &OrderLevel| 10f64.powf(level.level_dbfs / 10.0);
+    let sum: f64 = read.iter().map(|(s, level)| s * power(level)).sum();
+    let squares: f64 = read.iter().map(|(s, level)| (s * power(level) * level.level_se_db).powi(2)).sum();
+    (squares.sqrt() / sum.max(1e-40)).min(99.0)
 }

@@ -9,6 +9,7 @@ use super::comb::{Candidate, candidates, candidates_besides};
 use super::company::usual_beside;
 use super::findings::{Analysis, CaptureSummary, OtherSupply, TrackPoint};
 use super::folding::{hidden_supplies, is_half_rate};
+use super::level_track::LevelOverTime;
 use super::likeliest::likeliest;
 use super::orders::OrderLevel;
 use super::passes::{Followed, second_pass, survey, third_pass, tracked_apart};
@@ -20,7 +21,7 @@ use super::supplies::nearest_supply;
 use super::survey::Surveyed;
 use super::tracker::Tracked;
 use super::{AnalyseOptions, AnalysisError, PhaseTrack};
-use crate::capture::Capture;
+use crate::capture::{Capture, SampleFormat};
 
 /// Shortest capture in which anything can be told, in seconds.
 const SHORTEST_S: f64 = 0.5;
@@ -77,6 +78,8 @@ pub(super) struct One {
     /// Nats that the verdict gave.
     pub evidence: f64,
     pub hum: Option<Hum>,
+    /// The level of its hum over time.
+    pub level: LevelOverTime,
     /// Frequency of its hum, where that is another supply's than the account's.
     pub left_out_hz: Option<f64>,
     pub notes: Vec<String>,
@@ -135,11 +138,15 @@ fn analyse_one(
             peak: survey.peak,
             mean: survey.mean,
             rms: survey.rms,
+            peak_about_mean: survey.peak_about_mean,
+            sample_bits: sample_bits(capture.sample_format()),
+            ..CaptureSummary::default()
         },
         spectrum: Spectrum::default(),
         confidence: 0.0,
         evidence: 0.0,
         hum: None,
+        level: LevelOverTime::default(),
         left_out_hz: None,
         notes: capture_notes(
             &survey,
@@ -160,6 +167,7 @@ fn analyse_one(
     };
     let seen = second_pass(capture, channel, best, &survey, &mut |p| progress((1.0 + p) / 3.0))?;
     one.spectrum = seen.spectrum;
+    one.level = seen.level;
     one.confidence = seen.verdict.as_ref().map_or(0.0, |verdict| verdict.confidence);
     one.evidence = seen.verdict.as_ref().map_or(0.0, |verdict| verdict.evidence);
     let (Some(verdict), Some(tracked)) = (seen.verdict, seen.tracked) else { return Ok(one) };
@@ -211,6 +219,11 @@ fn analyse_one(
     one.hum = Some(hum);
     progress(1.0);
     Ok(one)
+}
+
+/// Bits of an integer sample.
+fn sample_bits(format: SampleFormat) -> Option<u16> {
+    (format != SampleFormat::F32).then(|| format.bits())
 }
 
 fn best_of(found: &[Candidate]) -> Option<&Candidate> {

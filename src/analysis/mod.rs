@@ -8,11 +8,14 @@ mod causes;
 mod coherent;
 mod comb;
 mod company;
+mod converter;
 mod decimator;
 mod findings;
 mod folding;
 mod gather;
 mod kalman;
+mod level_track;
+mod levels;
 mod likeliest;
 mod neighbours;
 mod orders;
@@ -23,20 +26,28 @@ mod presence;
 mod reading;
 mod reference;
 mod reread;
+mod run_up;
 mod spectrum;
 mod spread;
+mod steps;
 mod supplies;
 mod survey;
 mod swell;
 mod tracker;
 mod verdict;
+mod weighted;
+mod weighting;
 mod window;
 
 pub use analyse::{AnalysisRun, analyse};
+pub use causes::BENCH_CAPTURES;
+pub use converter::{Converter, FilterNeed, HumOnConverter, Needed, SHORT_OF_HEADROOM_DB, WhyNeeded};
 pub use findings::*;
 pub use orders::{OrderLevel, OrderMeter};
 pub use phase::PhaseTrack;
 pub use spectrum::{Spectrum, SpectrumMeter};
+pub use weighted::Weighted;
+pub use weighting::{a_weighting_db, bs468_weighting_db, weighted_level_dbfs};
 
 /// What the user asks of the analyser.
 #[derive(Debug, Clone, Default)]

@@ -6,6 +6,7 @@ use super::comb::Candidate;
 use super::company::{APART_HOP_S, are_shared, usual_beside};
 use super::findings::TrackPoint;
 use super::gather::{Gather, Gathered, kept_orders};
+use super::level_track::LevelOverTime;
 use super::likeliest::reach_hz;
 use super::orders::OrderMeter;
 use super::reading::{read_all, read_channel};
@@ -62,6 +63,7 @@ pub(super) struct Second {
     pub verdict: Option<Verdict>,
     /// The cells that it was tracked in.
     pub cells: Cells,
+    pub level: LevelOverTime,
 }
 
 pub(super) fn second_pass(
@@ -99,7 +101,10 @@ pub(super) fn second_pass(
             Company::Alone,
         )
     });
-    Ok(Second { reference, spectrum: spectrum.finish(), tracked, verdict, cells })
+    let level = tracked
+        .as_ref()
+        .map_or_else(LevelOverTime::default, |tracked| LevelOverTime::measure(&cells, tracked));
+    Ok(Second { reference, spectrum: spectrum.finish(), tracked, verdict, cells, level })
 }
 
 /// The offset from a first reference by the orders that another supply does not have, in blocks

@@ -62,6 +62,13 @@ impl Wander {
     }
 }
 
+impl Wander {
+    /// How far the 1 s means stray from a frequency at most.
+    pub fn furthest_hz(&self, from_hz: f64) -> f64 {
+        self.means_hz.iter().map(|mean| (mean - from_hz).abs()).fold(0.0, f64::max)
+    }
+}
+
 /// The spread of several captures about their common mean.
 pub(super) fn spread_about(mean_hz: f64, wanders: &[Wander]) -> Option<Spread> {
     let strays: Vec<f64> = wanders.iter().flat_map(|w| w.means_hz.iter().map(|m| m - mean_hz)).collect();

@@ -19,7 +19,7 @@ pub use cautions::{CAUTIONS, Caution};
 pub use excerpt::{Excerpt, Recordings};
 pub use partslist::parts_csv;
 pub use schematic::schematic_svg;
-pub use wording::{confidence, deviation, noise_alone, wander};
+pub use wording::{confidence, converter, deviation, level_error, noise_alone, wander, weighted};
 
 use crate::analysis::{Analysis, Spectrum};
 use crate::plan::Plan;
@@ -78,8 +78,8 @@ pub enum ReportError {
 }
 
 /// The names of the files that [`charts`] returns.
-pub const CHART_NAMES: [&str; 5] =
-    ["spectrum.svg", "response.svg", "track.svg", "harmonics.svg", "schematic.svg"];
+pub const CHART_NAMES: [&str; 6] =
+    ["spectrum.svg", "response.svg", "track.svg", "level.svg", "harmonics.svg", "schematic.svg"];
 
 /// The charts and the schematic: file name and SVG of each.
 pub fn charts(material: &Material) -> Vec<(&'static str, String)> {

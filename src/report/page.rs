@@ -7,10 +7,11 @@ use super::charts::{self, Chart, Size};
 use super::excerpt::OUTLINE_COLUMNS;
 use super::verdict::{self, level_with_volts, loss_words};
 use super::wording::{
-    band, confidence, counted, dbfs, decibel, deviation, duration, hertz, hertz_short, listing, number,
-    sentence, short, si, small_hertz, unbroken, wander, with_unit,
+    band, confidence, converter, counted, dbfs, decibel, deviation, duration, hertz, hertz_short,
+    level_error, listing, number, sentence, short, si, small_hertz, unbroken, wander, weighted, with_unit,
 };
 use super::{CAUTIONS, Excerpt, Material, ReportError, bench, partslist, wav};
+use crate::analysis::{BENCH_CAPTURES, Cause};
 use crate::plan::{Design, ReductionTarget};
 use crate::simulation::BeforeAfter;
 
@@ -44,7 +45,7 @@ fn view(material: &Material) -> Value {
         misses => material.simulation.misses.clone(),
         obstacles => plan.obstacles.clone(),
         need => verdict::need(material),
-        causes => serialised(&material.analysis.causes),
+        causes => serialised(causes(material)),
         found => serialised(found(material)),
         harmonics => serialised(harmonics(material)),
         supplies => serialised(supplies(material)),
@@ -90,6 +91,30 @@ fn view(material: &Material) -> Value {
     }
 }
 
+/// A likely cause as the page tells it.
+#[derive(Serialize)]
+struct CauseRow {
+    cause: String,
+    confidence: Option<String>,
+    evidence: String,
+    look_first: String,
+    first_cure: String,
+    tell_apart: String,
+}
+
+fn causes(material: &Material) -> Vec<CauseRow> {
+    let row = |cause: &Cause| CauseRow {
+        cause: cause.cause.clone(),
+        confidence: (cause.confidence > 0.0).then(|| number(cause.confidence, 2)),
+        evidence: cause.evidence.clone(),
+        look_first: cause.look_first.clone(),
+        first_cure: cause.first_cure.clone(),
+        // The two recordings at the bench have a place of their own on the page.
+        tell_apart: cause.tell_apart.replace(BENCH_CAPTURES, "").trim().to_owned(),
+    };
+    material.analysis.causes.iter().map(row).collect()
+}
+
 /// A name and what is to be said of it.
 #[derive(Serialize)]
 struct Fact {
@@ -125,6 +150,15 @@ fn found(material: &Material) -> Vec<Fact> {
             ),
         ));
     }
+    let captures = material.analysis.captures.iter();
+    facts.extend(
+        captures.clone().filter_map(|c| c.converter.as_ref()).map(|c| fact("Converter", converter(c))),
+    );
+    facts.extend(
+        captures
+            .filter_map(|c| c.weighted.as_ref())
+            .map(|w| fact("Weighted", weighted(w).replace(" -", " \u{2212}"))),
+    );
     if let Some(frequency) = mains.frequency_hz {
         let error = mains
             .frequency_se_hz
@@ -147,6 +181,7 @@ struct HarmonicRow {
     order: u32,
     frequency: String,
     level: String,
+    error: String,
     volts: String,
     phase: String,
     over_floor: String,
@@ -161,6 +196,7 @@ fn harmonics(material: &Material) -> Vec<HarmonicRow> {
             order: h.order,
             frequency: hertz(h.frequency_hz),
             level: dbfs(h.level_dbfs),
+            error: h.level_se_db.map_or("–".to_owned(), level_error),
             volts: h.rms_v.map_or("–".to_owned(), |v| si(v, "V", 3)),
             phase: format!("{}°", number(h.phase_deg, 0)),
             over_floor: with_unit(h.over_floor_db, 1, "dB"),

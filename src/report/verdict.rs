@@ -4,8 +4,9 @@ use serde::Serialize;
 
 use super::Material;
 use super::wording::{
-    band, counted, dbfs, decibel, hertz, hertz_short, listing, number, short, si, volts_rms,
+    band, counted, dbfs, decibel, hertz, hertz_short, listing, number, sentence, short, si, volts_rms,
 };
+use crate::analysis::SHORT_OF_HEADROOM_DB;
 use crate::simulation::Residual;
 
 /// Where a line of the brief stands.
@@ -231,35 +232,44 @@ pub(super) fn headline(material: &Material) -> (Standing, String) {
     }
 }
 
-/// Peaks nearer to full scale than this leave a converter short of headroom.
-const SHORT_OF_HEADROOM_DBFS: f64 = -6.0;
-
 /// Whether a filter before the converter is needed at all.
 pub(super) fn need(material: &Material) -> String {
-    let peak = material.simulation.peak_before_dbfs;
-    let clipped: u64 = material.analysis.captures.iter().map(|c| c.clipped_samples).sum();
     let gained = material.simulation.headroom_gained_db;
+    let converters = material.analysis.captures.iter().filter_map(|capture| capture.converter.as_ref());
+    let Some(need) = converters.map(|converter| &converter.filter_needed).min_by_key(|need| need.answer)
+    else {
+        return need_by_peak(material);
+    };
+    format!(
+        "Is a filter before the converter needed at all? {} On this recording the filter proposed gains {} of headroom.",
+        sentence(&need.statement),
+        decibel(gained)
+    )
+}
+
+/// The same for an analysis that does not say: by the peak alone.
+fn need_by_peak(material: &Material) -> String {
+    let peak = material.simulation.peak_before_dbfs;
+    let gained = decibel(material.simulation.headroom_gained_db);
+    let clipped: u64 = material.analysis.captures.iter().map(|c| c.clipped_samples).sum();
     if clipped > 0 {
         return format!(
             "{} of this recording reach the converter's limit: it is short of headroom, and what is lost there no \
-             software brings back. The filter gains {}.",
+             software brings back. The filter gains {gained}.",
             counted(clipped as usize, "sample", "samples"),
-            decibel(gained)
         );
     }
-    if peak > SHORT_OF_HEADROOM_DBFS {
+    if peak > -SHORT_OF_HEADROOM_DB {
         return format!(
-            "The largest sample stands {} below full scale, so headroom is short. The filter gains {}.",
+            "The largest sample stands {} below full scale, so headroom is short. The filter gains {gained}.",
             decibel(-peak),
-            decibel(gained)
         );
     }
     format!(
         "Is a filter needed at all? The largest sample stands {} below full scale, so the converter is not short of \
-         headroom (the filter would gain {}). Where nothing else asks for a filter in the line, averaging over \
+         headroom (the filter would gain {gained}). Where nothing else asks for a filter in the line, averaging over \
          whole mains periods or a notch in software does the same and costs no parts.",
         decibel(-peak),
-        decibel(gained)
     )
 }
 

@@ -1,6 +1,8 @@
 //! Numbers as people read them: units, sensible digits, a true minus sign,
 //! and words where there is no number.
 
+use crate::analysis::{Converter, Weighted};
+
 /// What stands where a figure is not finite.
 pub(super) const UNKNOWN: &str = "not known";
 
@@ -127,6 +129,51 @@ pub fn noise_alone(floor_hz: f64) -> String {
 /// The confidence that there is mains hum, with what it is.
 pub fn confidence(score: f64) -> String {
     format!("{score:.2} of 1, and 0.5 counts as found (a score, not a probability)")
+}
+
+/// What signal and hum do to the converter, in a line.
+pub fn converter(converter: &Converter) -> String {
+    let head = format!(
+        "largest sample {:.1} dB below full scale, crest factor {:.1} dB",
+        converter.headroom_db.max(0.0),
+        converter.crest_factor_db
+    );
+    let Some(hum) = &converter.hum else { return head };
+    let gain = if hum.gain_most_db < 0.05 {
+        "without it no room would be gained".to_owned()
+    } else if hum.gain_most_db - hum.gain_least_db < 0.1 {
+        format!("without it {:.1} dB ({:.1} bits) more room", hum.gain_least_db, hum.bits_least)
+    } else {
+        format!(
+            "without it {:.1} to {:.1} dB ({:.1} to {:.1} bits) more room",
+            hum.gain_least_db, hum.gain_most_db, hum.bits_least, hum.bits_most
+        )
+    };
+    format!(
+        "{head}; the hum's own peak is {:.0} % of that of the recording, {gain}",
+        100.0 * hum.share_of_peak
+    )
+}
+
+/// A level's standard error: no finer than a converter's own linearity lets one read it.
+pub fn level_error(error_db: f64) -> String {
+    match error_db {
+        error if !error.is_finite() => UNKNOWN.to_owned(),
+        error if error < 0.005 => "< 0.01\u{a0}dB".to_owned(),
+        error => format!("±\u{a0}{}", with_unit(error, 2, "dB")),
+    }
+}
+
+/// Hum and rest as hearing weighs them, in a line.
+pub fn weighted(levels: &Weighted) -> String {
+    let rest = match (levels.rest_a_dbfs, levels.rest_468_dbfs) {
+        (Some(a), Some(bs468)) => format!("all else {a:.1} dBFS A, {bs468:.1} dBFS BS.468-4"),
+        _ => "too short to weigh all else".to_owned(),
+    };
+    format!(
+        "hum {:.1} dBFS A, {:.1} dBFS BS.468-4; {rest} (RMS; the quasi-peak detector is not used)",
+        levels.hum_a_dbfs, levels.hum_468_dbfs
+    )
 }
 
 /// Text whose words and units a page must not part.

@@ -16,7 +16,6 @@ mod outcome;
 mod run;
 mod slow;
 mod verdict;
-mod weighting;
 
 use std::path::Path;
 
@@ -27,7 +26,6 @@ pub use error::SimulationError;
 pub use kernel::{EXACT_UP_TO, Kernel, LONGEST_FFT};
 pub use outcome::*;
 pub use run::{SimulateOptions, SimulationRun, Start};
-pub use weighting::{a_weighting_db, bs468_weighting_db, weighted_level_dbfs};
 
 use crate::analysis::{Analysis, PhaseTrack};
 use crate::capture::Capture;

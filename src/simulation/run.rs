@@ -9,12 +9,13 @@ use super::character::{group_delay_range_s, group_delay_s, insertion_loss_db, la
 use super::extension::{Extension, FIT_S};
 use super::meters::{Meters, Readings};
 use super::verdict::{Judged, is_asked_for, misses, target_db};
-use super::weighting::{a_weighting_db, bs468_weighting_db, weighted_level_dbfs};
 use super::{
     BeforeAfter, Convolver, EXACT_UP_TO, KeepMeasured, Kernel, Residual, Simulation, SimulationError,
     ThirdOctave,
 };
-use crate::analysis::{Analysis, OrderLevel, PhaseTrack, Spectrum};
+use crate::analysis::{
+    Analysis, OrderLevel, PhaseTrack, Spectrum, a_weighting_db, bs468_weighting_db, weighted_level_dbfs,
+};
 use crate::capture::{Capture, CaptureError, SampleFormat, WavWriter, Written};
 use crate::plan::{Design, LineBrief, span};
 

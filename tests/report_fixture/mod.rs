@@ -286,6 +286,7 @@ fn make_tide_gauge() -> Findings {
             rms_v: Some(10_f64.powf(level_dbfs / 20.0) * FULL_SCALE_V / 2_f64.sqrt()),
             phase_deg: 37.0 * f64::from(order) - 180.0,
             over_floor_db: level_dbfs + 112.0,
+            ..Harmonic::default()
         })
         .collect();
     let residual: Vec<Residual> = HUM
@@ -348,6 +349,13 @@ fn make_tide_gauge() -> Findings {
             TrackPoint { time_s, frequency_hz, se_hz: 0.002 + 0.003 * f64::from(n % 7) / 7.0 }
         })
         .collect();
+    let level_track = (0..60)
+        .map(|n| {
+            let time_s = f64::from(n) + 0.5;
+            let level_dbfs = if time_s < 38.4 { -24.6 } else { -22.3 } + 0.2 * (time_s * 2.3).sin();
+            LevelPoint { time_s, level_dbfs }
+        })
+        .collect();
     let analysis = Analysis {
         captures: vec![CaptureSummary {
             path: "demo-audio/tide-gauge.wav".to_owned(),
@@ -360,6 +368,7 @@ fn make_tide_gauge() -> Findings {
             peak: 0.39,
             mean: 0.01,
             rms: 0.2,
+            ..CaptureSummary::default()
         }],
         mains: Mains {
             found: true,
@@ -379,13 +388,26 @@ fn make_tide_gauge() -> Findings {
                     .to_owned(),
                 first_cure: "earth the screen at one end only, or isolate the transmitter; never lift a protective earth"
                     .to_owned(),
+                confidence: 0.72,
+                look_first: "every place where the screen meets earth".to_owned(),
+                tell_apart: "Unplug the second device: an earth loop's hum falls".to_owned(),
             },
             Cause {
                 cause: "Magnetic pick-up from pump motors".to_owned(),
                 evidence: "the level swells by 2.3 dB within the recording".to_owned(),
                 first_cure: "move the cable away from the motor leads, twist it".to_owned(),
+                ..Cause::default()
             },
         ],
+        level_track,
+        level_changes: vec![LevelChange {
+            time_s: 38.4,
+            over_s: 0.0,
+            order: 1,
+            from_dbfs: -25.1,
+            to_dbfs: -22.8,
+            orders: vec![1, 3],
+        }],
         other_supplies: vec![],
         folding: vec![],
         notes: vec![

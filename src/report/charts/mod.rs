@@ -7,6 +7,7 @@ mod axis;
 mod canvas;
 mod harmonics;
 mod legend;
+mod level;
 mod response;
 mod spectrum;
 mod track;
@@ -31,7 +32,7 @@ pub(super) struct Chart {
 
 /// All charts at this size, in the order of the page.
 pub(super) fn all(material: &Material, size: Size) -> Vec<Chart> {
-    [spectrum::chart, response::chart, track::chart, harmonics::chart]
+    [spectrum::chart, response::chart, track::chart, level::chart, harmonics::chart]
         .iter()
         .map(|draw| draw(material, size))
         .collect()
