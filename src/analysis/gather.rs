@@ -15,9 +15,9 @@ const LONGEST_FINE_S: f64 = 900.0;
 /// Most phasors kept in long cells: 16 MB, whatever the length of the capture.
 const MOST_PHASORS: usize = 1 << 20;
 /// Most long cells: what follows a phase through them takes some 400 bytes each.
-const MOST_CELLS: usize = 40_000;
+const MOST_CELLS: usize = 30_000;
 /// Orders kept where all of them are too many: the clearest tell the phase.
-const CLEAREST: usize = 16;
+const CLEAREST: usize = 8;
 /// Blocks in a cell, where there are enough.
 const TOGETHER: usize = 6;
 
@@ -53,14 +53,15 @@ impl Gather {
         let most = (MOST_PHASORS / orders.len().max(1)).clamp(1, MOST_CELLS);
         let together = (blocks / 20).clamp(1, TOGETHER).max(blocks.div_ceil(most));
         let noise = NoiseBeside::new(blocks, bank.hop_s(), orders.len());
-        let cells = Cells::new(orders, bank.hop_s(), together);
+        let cells = Cells::new(orders, bank.hop_s(), together, blocks.div_ceil(together));
         let low: Vec<u32> = orders.iter().copied().filter(|&k| k <= FINE_ORDERS).collect();
         // Blocks of 400 Hz are so short that notes tens of hertz away would fold onto a cell's
         // middle, as steady as a line: there each block is looked at.
         let fine_s = if reference.mean_frequency_hz() > 100.0 { 0.0 } else { FINE_S };
         let fine_blocks = ((fine_s / bank.hop_s()).round() as usize).clamp(1, together);
-        let fine = Cells::new(&low, bank.hop_s(), fine_blocks);
-        let most_fine = (LONGEST_FINE_S / fine.length_s) as usize;
+        let most_fine = (LONGEST_FINE_S / (fine_blocks as f64 * bank.hop_s())) as usize;
+        let room = blocks.div_ceil(fine_blocks).min(most_fine + 1);
+        let fine = Cells::new(&low, bank.hop_s(), fine_blocks, room);
         Self { bank, noise, cells, fine, most_fine }
     }
 

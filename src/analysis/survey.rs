@@ -90,7 +90,7 @@ impl ChannelSurvey {
             powers: Vec::new(),
             times_s: Vec::new(),
             taken: 0,
-            opening: Vec::new(),
+            opening: Vec::with_capacity(total.min((OPENING_S * rate_hz) as usize) + 1),
             kept: 0,
         }
     }

@@ -56,15 +56,15 @@ pub(super) struct Cells {
 }
 
 impl Cells {
-    /// Cells of so many blocks.
-    pub fn new(orders: &[u32], hop_s: f64, blocks: usize) -> Self {
+    /// Cells of so many blocks, with room for so many of them.
+    pub fn new(orders: &[u32], hop_s: f64, blocks: usize, room: usize) -> Self {
         Self {
             orders: orders.to_vec(),
             length_s: blocks as f64 * hop_s,
-            time_s: Vec::new(),
-            values: vec![Vec::new(); orders.len()],
+            time_s: Vec::with_capacity(room),
+            values: orders.iter().map(|_| Vec::with_capacity(room)).collect(),
             density: Vec::new(),
-            share: Vec::new(),
+            share: Vec::with_capacity(room),
             blocks,
             gathered: 0,
             sums: vec![Complex64::ZERO; orders.len()],
