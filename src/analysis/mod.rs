@@ -12,6 +12,7 @@ mod decimator;
 mod findings;
 mod folding;
 mod gather;
+mod heavy_tail;
 mod kalman;
 mod likeliest;
 mod neighbours;

@@ -47,7 +47,13 @@ pub fn along_a_known_track(over_db: f64, seed: u64) -> Outcome {
 pub const DRIFT: f64 = 0.1;
 
 /// Every harmonic of the whole analyser's account; the lowest stands `over_db` over the noise in 1/T.
-pub fn of_an_analysis(lines: &[(u32, f64)], colour: Colour, over_db: f64, swing_hz: f64, seed: u64) -> Vec<Option<Outcome>> {
+pub fn of_an_analysis(
+    lines: &[(u32, f64)],
+    colour: Colour,
+    over_db: f64,
+    swing_hz: f64,
+    seed: u64,
+) -> Vec<Option<Outcome>> {
     let (rate, duration_s) = (2000u32, 20.0);
     let mut noise = Noise::new(9000 + seed);
     let track = phase_of_wander(noise.between(49.9, 50.1), swing_hz, 0.04, duration_s);
@@ -83,7 +89,13 @@ pub fn score_known_track(over_db: f64, trials: u64) -> Score {
 }
 
 /// Score of all levels, and the share within 0.05 dB.
-pub fn score(lines: &[(u32, f64)], colour: Colour, over_db: f64, swing_hz: f64, trials: u64) -> (Score, Share) {
+pub fn score(
+    lines: &[(u32, f64)],
+    colour: Colour,
+    over_db: f64,
+    swing_hz: f64,
+    trials: u64,
+) -> (Score, Share) {
     let outcomes: Vec<Option<Outcome>> = (0..trials)
         .into_par_iter()
         .flat_map_iter(|seed| of_an_analysis(lines, colour, over_db, swing_hz, seed))

@@ -42,8 +42,9 @@ impl Score {
     pub fn of(case: &str, outcomes: &[Option<Outcome>]) -> Self {
         let seen: Vec<&Outcome> = outcomes.iter().flatten().collect();
         let count = seen.len().max(1) as f64;
-        let rms =
-            |part: &dyn Fn(&Outcome) -> f64| (seen.iter().map(|o| part(o).powi(2)).sum::<f64>() / count).sqrt();
+        let rms = |part: &dyn Fn(&Outcome) -> f64| {
+            (seen.iter().map(|o| part(o).powi(2)).sum::<f64>() / count).sqrt()
+        };
         let score = Self {
             case: case.to_owned(),
             trials: outcomes.len() as u64,
