@@ -13,11 +13,14 @@ use super::survey::{SURVEY_TOP_HZ, Surveyed};
 use super::tracker::track;
 use super::verdict::{Company, Verdict};
 use rayon::prelude::*;
+use std::f64::consts::TAU;
 
 /// Score of a comb in the survey below which no second look is taken.
 const WORTH_A_LOOK: f64 = 3.0;
 /// Evidence in nats from which a public supply in its usual range needs no longer look.
 const CERTAIN: f64 = 25.0;
+/// A steady line's reference that is so far off is mended before the next look.
+const FAR_OFF_HZ: f64 = 0.05;
 
 /// The candidate whose lines, followed through the opening, say most.
 pub(super) fn likeliest(survey: &Surveyed, found: Vec<Candidate>, rate_hz: f64) -> Option<Candidate> {
@@ -91,7 +94,7 @@ struct Trial {
 }
 
 impl Trial {
-    fn of(survey: &Surveyed, candidate: Candidate) -> Option<Self> {
+    fn of(survey: &Surveyed, mut candidate: Candidate) -> Option<Self> {
         let rate_hz = survey.opening_rate_hz;
         let frames = survey.opening.len() as u64;
         let duration_s = frames as f64 / rate_hz;
@@ -113,6 +116,12 @@ impl Trial {
             Company::Alone,
         );
         let lines = verdict.lasting.iter().map(|&k| (k, tracked.lines[k as usize - 1].power)).collect();
+        // The survey of a short capture is coarse, and from a reference far off high orders are out
+        // of sight: the next look begins where this one ended.
+        let off_hz = tracked.advance.phase_rad / (TAU * duration_s);
+        if verdict.found && tracked.wander == 0.0 && off_hz.abs() > FAR_OFF_HZ {
+            candidate.path_hz.iter_mut().for_each(|f| *f += off_hz);
+        }
         Some(Self { candidate, frequency_hz, verdict, lines })
     }
 

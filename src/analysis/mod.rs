@@ -13,6 +13,7 @@ mod decimator;
 mod findings;
 mod folding;
 mod gather;
+mod heavy_tail;
 mod kalman;
 mod level_track;
 mod levels;

@@ -7,6 +7,7 @@
 //! step of the joint least squares), go through the Kalman smoother, again and again
 //! until nothing moves.
 
+use super::heavy_tail::{HeavyTail, median, typical_variance};
 use super::kalman::{Advance, Phases, Smoothed};
 use super::phasors::{BlockPhasors, block_response};
 use super::presence::{is_there_throughout, share_present};
@@ -30,12 +31,13 @@ const WINDOW_COST: f64 = 2.0;
 const CLEAR_IN_A_CELL: f64 = 900.0;
 /// Share of the mean amplitude under which the line is taken to be gone (20 dB).
 const GONE: f64 = 0.1;
+/// Farthest off its reference, in cycles a cell, that a line's reading is foretold: beyond, where
+/// the response goes through zero, a phase that is not found yet would send it anywhere.
+const FARTHEST_READ: f64 = 0.7;
 /// Variance of a phase that nothing is known of, in rad²: many turns.
 const UNKNOWN: f64 = 1e4;
 /// Phasors are limited in the search to so many times the typical one.
 const LARGEST: f64 = 2.5;
-/// Degrees of freedom of the weights where noise is heavy-tailed (Student's t).
-const TAIL: f64 = 4.0;
 
 /// Phasors averaged over a few blocks, so that neighbours are nearly independent.
 #[derive(Debug, Clone)]
@@ -111,17 +113,36 @@ impl Cells {
         self.share.iter().take_while(|share| **share == 1.0).count()
     }
 
-    /// What a cell reads of a line so far off its reference, against one on it.
+    /// What a whole cell reads of a line so far off its reference, against one on it.
     pub fn response(&self, offset_hz: f64) -> f64 {
+        self.response_of(self.blocks as f64, offset_hz)
+    }
+
+    /// What a cell of so many blocks reads of a line so far off its reference.
+    fn response_of(&self, blocks: f64, offset_hz: f64) -> f64 {
         let hop_s = self.length_s / self.blocks as f64;
         let half_turn = std::f64::consts::PI * offset_hz * hop_s;
-        let blocks = self.blocks as f64;
-        let mean = if half_turn.abs() < 1e-9 {
+        let mean = if half_turn.sin().abs() < 1e-9 {
             1.0
         } else {
             (blocks * half_turn).sin() / (blocks * half_turn.sin())
         };
         block_response(offset_hz, hop_s) * mean
+    }
+
+    /// What each cell reads of a line whose phase moves against the reference, against one that
+    /// stands still: the last cell may be shorter, and reads more.
+    fn responses(&self, line: usize, phase: &[f64]) -> Vec<f64> {
+        let k = f64::from(self.orders[line]);
+        let last = phase.len() - 1;
+        let most_hz = FARTHEST_READ / self.length_s;
+        let one = |b: usize| {
+            let (from, to) = (b.saturating_sub(1), (b + 1).min(last));
+            let offset_hz = (phase[to] - phase[from]) / (TAU * (self.time_s[to] - self.time_s[from]));
+            let away_hz = (k * offset_hz).clamp(-most_hz, most_hz);
+            self.response_of((self.share[b] * self.blocks as f64).round(), away_hz)
+        };
+        (0..=last).map(one).collect()
     }
 
     /// Noise variance of each component of a cell.
@@ -182,9 +203,11 @@ pub(super) fn track(cells: &Cells, clear: &[u32], reach_hz: f64, duration_s: f64
     let mut phase = start.joined_phase();
     let lead_order = f64::from(cells.orders[start.lead()]);
     let mut phase_sd = 0.5 / lead_order;
+    let mut judged = phase.clone();
     let mut found = None;
     for round in 0..ROUNDS {
-        let phases = measured_phases(cells, &phase, phase_sd, start.lead(), round >= 1);
+        let look = Look { phase: &phase, judged: &judged, phase_sd, lead: start.lead(), robust: round >= 1 };
+        let (phases, apart) = measured_phases(cells, &look);
         let wander = phases.likeliest_wander();
         let smoothed = phases.smoothed(wander);
         let count = phase.len() as f64;
@@ -193,17 +216,39 @@ pub(super) fn track(cells: &Cells, clear: &[u32], reach_hz: f64, duration_s: f64
         let posterior = smoothed.phase_variance.iter().sum::<f64>() / count;
         phase_sd = (posterior + 0.1 * moved).sqrt();
         phase.clone_from(&smoothed.phase_rad);
-        found = Some((phases, wander, smoothed));
+        judged = by_the_others(&phases, &smoothed);
+        found = Some((phases, apart, wander, smoothed));
     }
-    let (phases, wander, smoothed) = found?;
-    let advance = phases.advance(wander, duration_s);
+    let (phases, apart, wander, smoothed) = found?;
+    let mut advance = phases.advance(wander, duration_s);
+    advance.variance /= 1.0 - apart;
     let lines = (0..cells.orders.len()).map(|i| standing(cells, i, &smoothed.phase_rad)).collect();
     let orders = cells.orders.clone();
     Some(Tracked { smoothed, phases, wander, advance, orders, lines })
 }
 
-/// One measured phase a cell, by all significant harmonics together.
-fn measured_phases(cells: &Cells, phase: &[f64], phase_sd: f64, lead: usize, robust: bool) -> Phases {
+/// Along what, and how, the phases of one round are measured.
+struct Look<'a> {
+    phase: &'a [f64],
+    /// The phase by which a cell's noise is judged.
+    judged: &'a [f64],
+    phase_sd: f64,
+    lead: usize,
+    robust: bool,
+}
+
+/// The phase of each cell as all other cells tell it. A track that wanders runs through the cells
+/// that count most; judged by that, they would look quiet, and count the more.
+fn by_the_others(phases: &Phases, smoothed: &Smoothed) -> Vec<f64> {
+    let shares = smoothed.phase_variance.iter().zip(&phases.variance).map(|(own, all)| (own / all).min(0.9));
+    let both = smoothed.phase_rad.iter().zip(&phases.phase_rad);
+    both.zip(shares).map(|((smooth, seen), h)| smooth - h / (1.0 - h) * (seen - smooth)).collect()
+}
+
+/// One measured phase a cell, by all significant harmonics together, and the share of their
+/// information on frequency that goes into each harmonic's own phase.
+fn measured_phases(cells: &Cells, look: &Look) -> (Phases, f64) {
+    let Look { phase, judged, phase_sd, lead, robust } = *look;
     let count = cells.count();
     let (mut pull, mut information) = (vec![0.0; count], vec![0.0; count]);
     let mut lines: Vec<(usize, f64)> = Vec::new();
@@ -218,21 +263,101 @@ fn measured_phases(cells: &Cells, phase: &[f64], phase_sd: f64, lead: usize, rob
     if lines.is_empty() {
         lines.push((lead, f64::from(cells.orders[lead])));
     }
+    let mut middles = Middles::default();
     for (line, k) in lines {
-        let turned: Vec<Complex64> = turned(cells, line, phase).collect();
-        let (mean, variance, weights) = weighted_mean(&turned, cells, cells.variance(line), robust);
-        for (b, z) in turned.iter().enumerate() {
+        let mut own = Middle::default();
+        let seen = Seen {
+            turned: turned(cells, line, phase).collect(),
+            judged: turned(cells, line, judged).collect(),
+            reads: cells.responses(line, phase),
+        };
+        let Worth { mean, variance, weights, efficiency } =
+            weighted_mean(&seen, cells, cells.variance(line), robust);
+        for (b, z) in seen.turned.iter().enumerate() {
             let weight = cells.share[b] * weights.as_ref().map_or(1.0, |w| w[b]) / variance;
-            let there = share_there(*z, mean, variance);
-            pull[b] += weight * k * there * (mean.conj() * z).im;
-            information[b] += weight * k * k * there * there * mean.norm_sqr();
+            let there = seen.reads[b] * share_there(*z, mean * seen.reads[b], variance);
+            pull[b] += weight * k * there * mean.norm_sqr() * stray(*z, mean * there, variance) * there;
+            let told = efficiency * weight * k * k * there * there * mean.norm_sqr();
+            information[b] += told;
+            own.take(cells.time_s[b], told);
         }
+        middles.0.push(own);
     }
     let least = 1e-13;
-    Phases {
+    let phases = Phases {
         time_s: cells.time_s.clone(),
         phase_rad: (0..count).map(|b| phase[b] + pull[b] / information[b].max(1e-30)).collect(),
         variance: information.iter().map(|i| (1.0 / i.max(1e-30)).clamp(least, UNKNOWN)).collect(),
+    };
+    (phases, middles.share_apart())
+}
+
+/// Where in time the information of one harmonic lies.
+#[derive(Default)]
+struct Middle {
+    sum: f64,
+    first: f64,
+    second: f64,
+}
+
+impl Middle {
+    fn take(&mut self, time_s: f64, information: f64) {
+        self.sum += information;
+        self.first += information * time_s;
+        self.second += information * time_s * time_s;
+    }
+}
+
+/// The same of all harmonics.
+#[derive(Default)]
+struct Middles(Vec<Middle>);
+
+impl Middles {
+    /// Each harmonic's own phase is unknown, so that what harmonics heard at different times say
+    /// of each other is lost: the spread between their middles over the spread of all.
+    fn share_apart(&self) -> f64 {
+        let sum = |part: fn(&Middle) -> f64| self.0.iter().map(part).sum::<f64>();
+        let (total, first, second) = (sum(|m| m.sum), sum(|m| m.first), sum(|m| m.second));
+        let whole = second - first * first / total.max(1e-30);
+        let within = sum(|m| m.second - m.first * m.first / m.sum.max(1e-30));
+        (1.0 - within / whole.max(1e-30)).clamp(0.0, 0.9)
+    }
+}
+
+/// A line's phasors along a track, and what each cell reads of the line's amplitude.
+struct Seen {
+    turned: Vec<Complex64>,
+    /// As the other cells tell the phase.
+    judged: Vec<Complex64>,
+    reads: Vec<f64>,
+}
+
+impl Seen {
+    /// The amplitude that fits best, each cell with a weight of its own.
+    fn mean(&self, weight: impl Fn(usize) -> f64) -> Complex64 {
+        let (mut sum, mut total) = (Complex64::ZERO, 1e-30);
+        for (b, (z, reads)) in self.turned.iter().zip(&self.reads).enumerate() {
+            sum += weight(b) * reads * z;
+            total += weight(b) * reads * reads;
+        }
+        sum / total
+    }
+
+    /// Squared distance of each cell from what it should read.
+    fn squares(&self, mean: Complex64) -> Vec<f64> {
+        self.judged.iter().zip(&self.reads).map(|(z, reads)| (z - mean * reads).norm_sqr()).collect()
+    }
+}
+
+/// Angle of a cell to what it should read: where the cell tells it clearly, the angle itself,
+/// elsewhere the part across, which noise does not wrap.
+fn stray(z: Complex64, expected: Complex64, variance: f64) -> f64 {
+    let turned = expected.conj() * z;
+    let amplitude = (z.norm_sqr() / expected.norm_sqr().max(1e-40)).sqrt();
+    if expected.norm_sqr() > CLEAR_IN_A_CELL * variance && (0.5..2.0).contains(&amplitude) {
+        turned.arg()
+    } else {
+        turned.im / expected.norm_sqr().max(1e-40)
     }
 }
 
@@ -266,32 +391,35 @@ pub(super) fn along_track(fine: &Cells, line: usize, tracked: &Tracked) -> Vec<C
     turned(fine, line, &phase).collect()
 }
 
-/// Mean phasor, noise variance of a component, and weights where the noise is
-/// so heavy-tailed (music, clicks) that cells differ in worth.
-fn weighted_mean(
-    turned: &[Complex64],
-    cells: &Cells,
+/// What the cells of a line are worth.
+struct Worth {
+    /// Mean phasor.
+    mean: Complex64,
+    /// Noise variance of a component.
     variance: f64,
-    robust: bool,
-) -> (Complex64, f64, Option<Vec<f64>>) {
-    let mean = mean_of(turned.iter().copied(), cells);
-    if !robust || turned.len() < 16 {
-        return (mean, variance, None);
+    /// Weights where the noise is so heavy-tailed (music, clicks) that cells differ.
+    weights: Option<Vec<f64>>,
+    /// What the weights' sum tells of a position, over what it seems to.
+    efficiency: f64,
+}
+
+fn weighted_mean(seen: &Seen, cells: &Cells, variance: f64, robust: bool) -> Worth {
+    let even = |mean| Worth { mean, variance, weights: None, efficiency: 1.0 };
+    let mut mean = component_median(&seen.turned);
+    if !robust || seen.turned.len() < 16 || typical_variance(&seen.squares(mean)) > 0.5 * variance {
+        return even(seen.mean(|b| cells.share[b]));
     }
-    let mut mean = component_median(turned);
-    let mut squares: Vec<f64> = turned.iter().map(|z| (z - mean).norm_sqr()).collect();
-    // Median of |n|² is 2·ln 2 of a component's variance.
-    let typical = (median(&mut squares) / (2.0 * LN_2)).max(1e-34);
-    if typical > 0.5 * variance {
-        return (mean_of(turned.iter().copied(), cells), variance, None);
-    }
+    let mut tail = HeavyTail::likeliest(&seen.squares(mean));
     let mut weights = Vec::new();
-    for _ in 0..4 {
-        weights = turned.iter().map(|z| (TAIL + 2.0) / (TAIL + (z - mean).norm_sqr() / typical)).collect();
-        let total: f64 = weights.iter().sum();
-        mean = turned.iter().zip(&weights).map(|(z, w)| z * w).sum::<Complex64>() / total;
+    for round in 0..6 {
+        let squares = seen.squares(mean);
+        if round == 3 {
+            tail = HeavyTail::likeliest(&squares);
+        }
+        weights = squares.iter().map(|square| tail.weight(*square)).collect();
+        mean = seen.mean(|b| weights[b]);
     }
-    (mean, typical, Some(weights))
+    Worth { mean, variance: tail.variance, weights: Some(weights), efficiency: tail.efficiency() }
 }
 
 /// How a harmonic stands along the track.
@@ -323,14 +451,6 @@ fn component_median(values: &[Complex64]) -> Complex64 {
     let mut re: Vec<f64> = values.iter().map(|z| z.re).collect();
     let mut im: Vec<f64> = values.iter().map(|z| z.im).collect();
     Complex64::new(median(&mut re), median(&mut im))
-}
-
-fn median(values: &mut [f64]) -> f64 {
-    if values.is_empty() {
-        return 0.0;
-    }
-    let middle = values.len() / 2;
-    *values.select_nth_unstable_by(middle, f64::total_cmp).1
 }
 
 /// The windowed search for the offset from the reference.

@@ -60,7 +60,7 @@ fn bound_hz(beside: &[f64], fundamental_hz: f64) -> f64 {
     LINES.into_iter().map(information).sum::<f64>().sqrt().recip() / TAU
 }
 
-/// The programme of a trial with its noise, and the recording.
+/// One recording of a hum under music.
 pub fn under_music(over_hum_db: f64, swing_hz: f64, seed: u64) -> Option<Outcome> {
     let mut noise = Noise::new(6000 + seed);
     let truth = noise.between(49.9, 50.1);
@@ -79,13 +79,6 @@ pub fn under_music(over_hum_db: f64, swing_hz: f64, seed: u64) -> Option<Outcome
     let samples = signal.iter().zip(&beside).map(|(x, n)| x + n).collect();
     let mains = run(RATE, vec![samples]).analysis.mains;
     let bound = bound_hz(&beside, truth);
-    if std::env::var("NOTCHWRIGHT_SHOW").is_ok() {
-        println!(
-            "seed {seed}: bound {bound:.2e}, error {:?}, stated {:?}",
-            mains.frequency_hz.map(|f| (f - truth) / bound),
-            mains.frequency_se_hz.map(|s| s / bound)
-        );
-    }
     Some(Outcome { error: mains.frequency_hz? - truth, bound, stated: mains.frequency_se_hz? })
 }
 

@@ -17,6 +17,18 @@ pub enum Wander {
     Ramp,
 }
 
+/// Wander, its size in hertz (Gaussian: standard deviation) and the hum over the noise in
+/// decibels: all under 0.02 Hz, some near five times the floor.
+pub const CASES: [(Wander, f64, f64); 7] = [
+    (Wander::Gaussian { memory_s: 60.0 }, 0.008, 10.0),
+    (Wander::Gaussian { memory_s: 60.0 }, 0.006, 0.0),
+    (Wander::Gaussian { memory_s: 10.0 }, 0.008, 15.0),
+    (Wander::Sine { turn_s: 300.0 }, 0.006, 0.0),
+    (Wander::Sine { turn_s: 60.0 }, 0.015, 5.0),
+    (Wander::Ramp, 0.019, 0.0),
+    (Wander::Ramp, 0.002, 0.0),
+];
+
 const RATE: u32 = 400;
 const DURATION_S: f64 = 600.0;
 /// Knots of the true track a second.
@@ -92,9 +104,6 @@ pub fn found(wander: Wander, size_hz: f64, hum_to_noise_db: f64, seed: u64) -> F
     let truth = true_spread_hz(&track, DURATION_S);
     let spread = done.mains.spread_hz.expect("found");
     let floor = done.mains.spread_floor_hz.expect("found");
-    if std::env::var("NOTCHWRIGHT_SHOW").is_ok() {
-        println!("{wander:?} {size_hz} seed {seed}: truth {truth:.5} spread {spread:.5} floor {floor:.6}");
-    }
     let below_is_said = done.notes.iter().any(|note| note.contains("below what noise alone shows"));
     assert_eq!(below_is_said, spread < floor, "{:?}", done.notes);
     Found { ratio: spread / truth, over_floor: truth / floor, below_is_said }

@@ -7,7 +7,7 @@ mod accuracy;
 mod analysis_signals;
 
 use accuracy::frequency::{Colour, FIVE, ONE};
-use accuracy::spread::Wander;
+use accuracy::track::Motion;
 use accuracy::{Score, frequency, levels, music, spread, track, trials_or};
 use rayon::prelude::*;
 
@@ -48,27 +48,18 @@ fn main() {
         }
     }
     if wanted("track") {
-        let orders: Vec<(f64, u32)> = (1..=50).map(|k| (45.0 + 0.41 * f64::from(k), k)).collect();
-        for (rate, duration_s) in [(8000, 5.0), (8000, 1.0), (48000, 5.0)] {
-            track::worst_of(rate, duration_s, &orders);
+        for (rate, fundamentals) in [(8000, 4), (48000, 1)] {
+            track::worst_of(rate, 10.0, &track::beside_each_order(fundamentals));
+        }
+    }
+    if wanted("motion") {
+        for motion in [Motion::Step(0.2), Motion::Ramp(1.0), Motion::Ramp(0.2), Motion::Sine(20.0)] {
+            track::followed(motion, trials.div_ceil(10));
         }
     }
     if wanted("spread") {
-        for (wander, size_hz, db) in [
-            (Wander::Gaussian { memory_s: 60.0 }, 0.01, 10.0),
-            (Wander::Gaussian { memory_s: 10.0 }, 0.01, 10.0),
-            (Wander::Gaussian { memory_s: 60.0 }, 0.005, 0.0),
-            (Wander::Sine { turn_s: 300.0 }, 0.02, 0.0),
-            (Wander::Sine { turn_s: 60.0 }, 0.01, 0.0),
-            (Wander::Ramp, 0.02, 0.0),
-            (Wander::Ramp, 0.005, 0.0),
-        ] {
-            spread::score(wander, size_hz, db, trials);
-        }
-    }
-    if words == ["one"] {
-        for (f, k) in [(46.23, 3), (46.23, 30), (50.0, 1)] {
-            track::worst_of(8000, 5.0, &[(f, k)]);
+        for (wander, size_hz, hum_to_noise_db) in spread::CASES {
+            spread::score(wander, size_hz, hum_to_noise_db, trials);
         }
     }
     if wanted("music") {
