@@ -18,6 +18,8 @@ use rayon::prelude::*;
 const WORTH_A_LOOK: f64 = 3.0;
 /// Evidence in nats from which a public supply in its usual range needs no longer look.
 const CERTAIN: f64 = 25.0;
+/// Nats that being picked for its evidence may have given a comb.
+const PICKED: f64 = 4.0;
 
 /// The candidate whose lines, followed through the opening, say most.
 pub(super) fn likeliest(survey: &Surveyed, found: Vec<Candidate>, rate_hz: f64) -> Option<Candidate> {
@@ -63,10 +65,12 @@ pub(super) fn likeliest(survey: &Surveyed, found: Vec<Candidate>, rate_hz: f64) 
     let stronger = |trial: &Trial| usual(trial) && trial.is_stronger_than(&tried[chosen]);
     let two = tried.get(chosen).is_some_and(usual);
     let chosen = if two { tried.iter().position(stronger).unwrap_or(chosen) } else { chosen };
-    // Of two accounts of one comb, the survey's own: the other was picked for its evidence.
+    // Of two accounts of one comb, the survey's own, unless it says less: the other was picked
+    // for its evidence.
     let surveyed = |trial: &Trial| {
         let apart = trial.frequency_hz / tried[chosen].frequency_hz - 1.0;
-        found(trial) && trial.candidate.score > 0.0 && apart.abs() < 0.005
+        let says_less = trial.verdict.evidence < tried[chosen].verdict.evidence - PICKED;
+        found(trial) && trial.candidate.score > 0.0 && apart.abs() < 0.005 && !says_less
     };
     let chosen = tried.iter().position(surveyed).unwrap_or(chosen);
     (chosen < tried.len()).then(|| tried.swap_remove(chosen).candidate)

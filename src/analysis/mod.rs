@@ -20,6 +20,7 @@ mod passes;
 mod phase;
 mod phasors;
 mod presence;
+mod quiet;
 mod reference;
 mod spectrum;
 mod spread;

@@ -2,6 +2,7 @@
 
 use super::comb::weight;
 use super::neighbours::{Standing, standings};
+use super::quiet::over_even_noise;
 use super::supplies::{FAMILIES, SUPPLIES, is_usual, nearest_supply, prior};
 use super::swell::swell;
 use super::tracker::{Cells, Tracked};
@@ -17,6 +18,9 @@ const ALONE_STRONG: f64 = 60.0;
 /// Share of the time below which loud moments alone make a line: noise around a weak one
 /// leaves it nearly half of the time.
 const SELDOM: f64 = 0.4;
+/// Width in hertz in which public supplies are expected, and as much again: half of all that
+/// hums is there.
+const EXPECTED_HZ: f64 = 4.4;
 /// Most that one order adds.
 const MOST_FROM_ONE: f64 = 40.0;
 /// Evidence at which the find is as likely chance as not.
@@ -77,7 +81,7 @@ pub(super) struct Verdict {
 
 impl Verdict {
     /// Evidence is the sum over lasting orders of their log-likelihood ratio
-    /// (power over noise in 1/T), less what the best of all frequencies tried
+    /// (power over noise in 1/T; 3 less under programme), less what the best of all frequencies tried
     /// shows by chance. Confidence is 1/(1 + e^−(evidence − 14)/3): ½ where the
     /// find may as well be chance or programme, 0.95 nine nats above. What is over
     /// ½ is pressed under 0.9 to 0.7 outside the usual range of a supply, and
@@ -91,25 +95,27 @@ impl Verdict {
         motion: &Motion,
         company: Company,
     ) -> Self {
-        let lines = fine.orders.iter().zip(&tracked.lines).zip(standings(fine, tracked));
-        let heard: Vec<Heard> = lines
-            .filter(|((_, line), _)| line.lasting >= COUNTS && line.steadiness >= STEADY && line.throughout)
-            .filter(|((_, line), _)| line.presence >= SELDOM)
-            .map(|((&order, line), beside)| Heard { order, lasting: line.lasting, beside })
-            .collect();
-        let alone = heard.iter().filter(|line| line.beside.is_none_or(|beside| stands_alone(&beside)));
-        let lasting: Vec<(u32, f64)> = alone.map(|line| (line.order, line.lasting)).collect();
+        let heard: Vec<Heard> = heard_all_the_time(fine, tracked);
+        let alone = heard.iter().filter(|line| line.stands_alone());
+        let lasting: Vec<(u32, f64)> = alone.map(|line| (line.order, line.says())).collect();
+        if std::env::var("NWDBG").is_ok() {
+            for ((order, line), beside) in fine.orders.iter().zip(&tracked.lines).zip(standings(fine, tracked)) {
+                if line.lasting > 5.0 && (*order < 8 || line.lasting > 12.0) {
+                    eprintln!("  DBG {frequency_hz:.3} k{order} lasting {:.1} steadi {:.2} pres {:.2} thr {} beside {beside:.1?}", line.lasting, line.steadiness, line.presence, line.throughout);
+                }
+            }
+        }
         let family = FAMILIES.iter().find(|f| f.from_hz <= frequency_hz && frequency_hz <= f.to_hz);
-        let searched_hz = family.map_or(30.0, |f| f.to_hz - f.from_hz);
+        let expected =
+            nearest_supply(frequency_hz).is_some_and(|s| s.is_public() && s.is_usual(frequency_hz));
+        let searched_hz = if expected { EXPECTED_HZ } else { family.map_or(30.0, |f| f.to_hz - f.from_hz) };
         let tried = (searched_hz * duration_s.max(1.0) * 5.0).ln();
-        let weighed: f64 = lasting.iter().map(|&(k, r)| weight(k) * (r - 3.0).min(MOST_FROM_ONE)).sum();
+        let weighed: f64 = lasting.iter().map(|&(k, nats)| weight(k) * nats).sum();
         let evidence = prior(frequency_hz) * weighed - tried;
         let orders: Vec<u32> = lasting.into_iter().map(|(order, _)| order).collect();
         // One line that moves far is a gliding tone: a supply's other orders move with it.
         let alone_far =
             motion.range_hz > FAR * frequency_hz && (orders.len() < 2 || !orders.iter().any(|&k| k <= 2));
-        let expected =
-            nearest_supply(frequency_hz).is_some_and(|s| s.is_public() && s.is_usual(frequency_hz));
         let played = if expected {
             is_beside_the_line(fine, tracked, &heard, &orders)
         } else {
@@ -122,6 +128,9 @@ impl Verdict {
         let confidence =
             if plausible { below_ceiling(chance, frequency_hz, ambiguous.is_some()) } else { 0.1 * chance };
         let found = confidence >= 0.5;
+        if std::env::var("NWDBG").is_ok() {
+            eprintln!("DBG verdict {frequency_hz:.3} ev {evidence:.1} orders {orders:?} conf {confidence:.3} plaus {plausible} far {alone_far} hasty {hasty} played {played} wander {:.1e}", tracked.wander);
+        }
         Self { found, confidence, evidence, lasting: orders, ambiguous }
     }
 }
@@ -129,8 +138,42 @@ impl Verdict {
 /// A line that is there all the time.
 struct Heard {
     order: u32,
+    /// Power over noise in 1/T, from medians over time.
     lasting: f64,
+    /// The same from means, where the noise is even.
+    over_even: Option<f64>,
     beside: Option<Standing>,
+}
+
+impl Heard {
+    /// Nats that it adds: what stands in even noise is no programme's.
+    fn says(&self) -> f64 {
+        let against_programme = self.lasting - 3.0;
+        self.over_even.map_or(against_programme, |over| over.max(against_programme)).min(MOST_FROM_ONE)
+    }
+
+    fn stands_alone(&self) -> bool {
+        self.beside.is_none_or(|beside| {
+            // A strong line shows sidebands that noise would hide beside a weak one.
+            let needed = (beside.over_noise / 20.0).clamp(ALONE, ALONE_STRONG);
+            (beside.over_noise >= COUNTS || self.over_even.is_some_and(|over| over >= COUNTS))
+                && beside.over_highest >= needed
+        })
+    }
+}
+
+fn heard_all_the_time(fine: &Cells, tracked: &Tracked) -> Vec<Heard> {
+    let all = tracked.lines.iter().zip(standings(fine, tracked)).enumerate();
+    let there = all.filter(|(_, (line, _))| line.steadiness >= STEADY && line.throughout && line.presence >= SELDOM);
+    there
+        .map(|(i, (line, beside))| Heard {
+            order: fine.orders[i],
+            lasting: line.lasting,
+            over_even: over_even_noise(fine, i, tracked),
+            beside,
+        })
+        .filter(|line| line.lasting >= COUNTS || line.over_even.is_some_and(|over| over >= COUNTS))
+        .collect()
 }
 
 /// Whether a comb swells or shakes as somebody's note does. Where generators, islands,
@@ -190,12 +233,6 @@ fn are_a_supplys(orders: &[u32], frequency_hz: f64) -> bool {
     }
     let third = has(3) && (has(5) || (orders.len() >= 2 && usual));
     has(1) || has(2) || third || only(3) || only(6)
-}
-
-fn stands_alone(beside: &Standing) -> bool {
-    // A strong line shows sidebands that noise would hide beside a weak one.
-    let needed = (beside.over_noise / 20.0).clamp(ALONE, ALONE_STRONG);
-    beside.over_noise >= COUNTS && beside.over_highest >= needed
 }
 
 /// Another public supply whose comb has all these lines within its usual range.
