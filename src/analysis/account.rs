@@ -89,6 +89,7 @@ fn nothing(captures: Vec<CaptureSummary>, confidence: f64, notes: Vec<String>) -
         frequency_se_hz: None,
         spread_hz: None,
         spread_floor_hz: None,
+        share_of_time: None,
         confidence,
     };
     Analysis {
@@ -137,6 +138,7 @@ fn merged_mains(done: &[One], base: usize, notes: &mut Vec<String>) -> Mains {
         frequency_se_hz: Some(se_hz),
         spread_hz: spread.map(|spread| spread.spread_hz),
         spread_floor_hz: spread.map(|spread| spread.floor_hz),
+        share_of_time: hums[0].1.share_of_time,
         confidence: done[base].confidence,
     }
 }

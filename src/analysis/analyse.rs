@@ -11,6 +11,7 @@ use super::findings::{Analysis, CaptureSummary, OtherSupply, TrackPoint};
 use super::folding::{hidden_supplies, is_half_rate};
 use super::likeliest::likeliest;
 use super::orders::OrderLevel;
+use super::passing::presence_note;
 use super::passes::{read_channel, second_pass, survey, third_pass, tracked_apart};
 use super::reference::mean_frequency_hz;
 use super::spectrum::{Spectrum, SpectrumMeter};
@@ -18,6 +19,7 @@ use super::spread::Wander;
 use super::supplies::nearest_supply;
 use super::survey::Surveyed;
 use super::tracker::Tracked;
+use super::verdict::could_be_all;
 use super::{AnalyseOptions, AnalysisError, PhaseTrack};
 use crate::capture::Capture;
 
@@ -92,6 +94,8 @@ pub(super) struct Hum {
     pub levels: Vec<OrderLevel>,
     pub listed: Vec<u32>,
     pub other_supplies: Vec<OtherSupply>,
+    /// Share of the time for which it is there, where it comes and goes.
+    pub share_of_time: Option<f64>,
 }
 
 fn analyse_one(
@@ -185,6 +189,12 @@ fn analyse_one(
     let mut hum = third_pass(capture, channel, &reference, &tracked, &verdict, &besides, &mut |p| {
         progress((2.0 + p) / 3.0);
     })?;
+    if !could_be_all(&hum.listed, hum.frequency_hz) {
+        // The lines that made the find are not among those that stand along the whole track.
+        one.confidence *= 0.1;
+        progress(1.0);
+        return Ok(one);
+    }
     if let Some(other_hz) = verdict.ambiguous {
         one.notes.push(format!(
             "ambiguous: the lines found fit a supply of {:.0} Hz and one of {other_hz:.0} Hz alike; orders are \
@@ -203,6 +213,10 @@ fn analyse_one(
         ));
         hum.se_hz = hum.se_hz.max((0.5 * rate_hz - hum.frequency_hz).abs()).max(1.0 / duration_s);
         hum.wander = None;
+    }
+    if let Some(stays) = &seen.stays {
+        hum.share_of_time = Some(stays.share(duration_s));
+        one.notes.push(presence_note(stays, duration_s));
     }
     one.hum = Some(hum);
     progress(1.0);

@@ -66,6 +66,9 @@ pub struct Mains {
     pub spread_hz: Option<f64>,
     /// What the estimator's noise alone would show as spread.
     pub spread_floor_hz: Option<f64>,
+    /// Share of the time for which the hum is there, where it comes and goes.
+    #[serde(default, skip_serializing_if = "Option::is_none")]
+    pub share_of_time: Option<f64>,
     /// How sure the finding is: a score from 0 to 1, no probability; 0.5 and more counts as
     /// found. It grows with how far the lines stand over what noise shows by chance, each
     /// line counted up to a limit. Outside the range that interconnected systems keep

@@ -8,6 +8,7 @@ use super::company::{are_shared, usual_beside};
 use super::gather::{Gather, Gathered};
 use super::passes::TOP_SHARE;
 use super::reference::{mean_frequency_hz, motion, reference_track};
+use super::stays::passing;
 use super::supplies::is_usual;
 use super::survey::{SURVEY_TOP_HZ, Surveyed};
 use super::tracker::track;
@@ -36,8 +37,20 @@ pub(super) fn likeliest(survey: &Surveyed, found: Vec<Candidate>, rate_hz: f64) 
             score: 0.0,
             power: 0.0,
             orders: faint.orders,
+            stays: None,
         });
         tried.extend(followed(survey, faint.collect()));
+    }
+    if !tried.iter().any(|trial| trial.verdict.found)
+        && let Some(passing) = passing(survey)
+    {
+        return Some(Candidate {
+            path_hz: vec![passing.frequency_hz; segments],
+            score: 0.0,
+            power: 0.0,
+            orders: passing.orders,
+            stays: Some(passing.stays),
+        });
     }
     // The survey gives one comb of all public supplies; there may be two.
     let usual = |trial: &Trial| is_public(trial) && is_usual(trial.frequency_hz);

@@ -11,6 +11,8 @@ use super::orders::OrderMeter;
 use super::reference::{mean_frequency_hz, motion, reference_frequency_hz, reference_track};
 use super::spectrum::{Spectrum, SpectrumMeter};
 use super::spread::Wander;
+use super::passing::{followed, with_gaps};
+use super::stays::Stays;
 use super::supplies::nearest_supply;
 use super::survey::{ChannelSurvey, Surveyed};
 use super::tracker::{Tracked, track};
@@ -86,6 +88,8 @@ pub(super) struct Second {
     pub spectrum: Spectrum,
     pub tracked: Option<Tracked>,
     pub verdict: Option<Verdict>,
+    /// Where the hum is there, if it comes and goes.
+    pub stays: Option<Stays>,
 }
 
 pub(super) fn second_pass(
@@ -110,6 +114,14 @@ pub(super) fn second_pass(
         progress,
     )?;
     let Gathered { cells, fine } = gather.finish();
+    let spectrum = spectrum.finish();
+    if let Some(stays) = &best.stays {
+        let gathered = Gathered { cells, fine };
+        let passing = followed(&gathered, stays, &best.orders, reach_hz(survey, best), &reference, (rate_hz, duration_s));
+        let stays = passing.as_ref().map(|passing| passing.stays.clone());
+        let (tracked, verdict) = passing.map(|passing| (passing.tracked, passing.verdict)).unzip();
+        return Ok(Second { reference, spectrum, tracked, verdict, stays });
+    }
     let tracked = track(&cells, &best.orders, reach_hz(survey, best), duration_s);
     let verdict = tracked.as_ref().map(|tracked| {
         let frequency_hz = mean_frequency_hz(&reference, tracked, duration_s);
@@ -122,7 +134,14 @@ pub(super) fn second_pass(
             Company::Alone,
         )
     });
-    Ok(Second { reference, spectrum: spectrum.finish(), tracked, verdict })
+    let found = verdict.as_ref().zip(tracked.as_ref()).filter(|(verdict, _)| verdict.found);
+    let gathered = Gathered { cells, fine };
+    let gaps = found.and_then(|(verdict, tracked)| {
+        let found_hz = mean_frequency_hz(&reference, tracked, duration_s);
+        with_gaps(survey, &gathered, verdict, &reference, (found_hz, rate_hz, duration_s))
+    });
+    let (stays, judged) = gaps.unzip();
+    Ok(Second { reference, spectrum, tracked, verdict: judged.or(verdict), stays })
 }
 
 /// The offset from a first reference by the orders that another supply does not have, in blocks
@@ -274,5 +293,6 @@ pub(super) fn third_pass(
         levels,
         listed,
         other_supplies: each_line_once(claims),
+        share_of_time: None,
     })
 }

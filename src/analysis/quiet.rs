@@ -12,11 +12,13 @@ use std::f64::consts::LN_2;
 const TOGETHER_S: f64 = 0.24;
 /// Fewest of them that tell anything.
 const FEWEST: usize = 12;
+/// Nats that a stretch of its own wins.
+const WON_IN_ONE: f64 = 1.0;
 /// Standard deviations by which even noise may seem uneven.
-const UNEVEN: f64 = 3.0;
+const UNEVEN: f64 = 2.5;
 
-/// Power over noise in 1/T of a line of the fine cells, from means over time, where the
-/// noise is even; `None` where it is not, or the cells are too few to tell.
+/// Power over noise in 1/T of a line of the fine cells, from means over time and less what
+/// following the noise wins, where that is even; `None` where it is not, or the cells are too few to tell.
 pub(super) fn over_even_noise(fine: &Cells, line: usize, tracked: &Tracked) -> Option<f64> {
     let together = ((TOGETHER_S / fine.length_s).round() as usize).max(1);
     let turned = along_track(fine, line, tracked);
@@ -31,12 +33,26 @@ pub(super) fn over_even_noise(fine: &Cells, line: usize, tracked: &Tracked) -> O
     let scatter = squares.iter().sum::<f64>() / (count - 1.0);
     // The median of an exponential is ln 2 of its mean.
     let typical = median(&mut squares) / LN_2;
-    // Mean over median of n exponentials strays by about 1/√n.
-    if scatter > typical * (1.0 + UNEVEN / count.sqrt()) {
+    let beside = 2.0 * fine.variance(line) / together as f64;
+    // Mean over median of n exponentials strays by about 1/√n; a note near the line, or
+    // leaving it, makes more there than farther off.
+    if scatter > typical.min(beside) * (1.0 + UNEVEN / count.sqrt()) {
         return None;
     }
-    let beside = 2.0 * fine.variance(line) / together as f64;
-    Some(mean.norm_sqr() * count / scatter.max(beside))
+    Some(mean.norm_sqr() * count / scatter.max(beside) - won_by_following(tracked))
+}
+
+/// Nats that a track free to wander wins by following noise: so many for each stretch of the
+/// smoother's time constant, (R·Δ/q)^¼.
+fn won_by_following(tracked: &Tracked) -> f64 {
+    let (times_s, wander) = (&tracked.phases.time_s, tracked.wander);
+    let (Some(&first_s), Some(&last_s)) = (times_s.first(), times_s.last()) else { return 0.0 };
+    if wander <= 0.0 || times_s.len() < 2 {
+        return 0.0;
+    }
+    let cell_s = (last_s - first_s) / (times_s.len() - 1) as f64;
+    let constant_s = (median(&mut tracked.phases.variance.clone()) * cell_s / wander).powf(0.25);
+    WON_IN_ONE * (last_s - first_s) / constant_s
 }
 
 fn median(values: &mut [f64]) -> f64 {

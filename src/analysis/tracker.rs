@@ -9,6 +9,7 @@
 
 use super::kalman::{Advance, Phases, Smoothed};
 use super::phasors::{BlockPhasors, block_response};
+use super::stays::Stay;
 use super::presence::{is_there_throughout, share_present};
 use num_complex::Complex64;
 use std::f64::consts::{LN_2, TAU};
@@ -28,6 +29,8 @@ const CLEAR_IN_A_CELL: f64 = 900.0;
 const GONE: f64 = 0.1;
 /// Variance of a phase that nothing is known of, in rad²: many turns.
 const UNKNOWN: f64 = 1e4;
+/// Nats of a line that are told from noise.
+const TOLD_NATS: f64 = 6.0;
 /// Phasors are limited in the search to so many times the typical one.
 const LARGEST: f64 = 2.5;
 /// Degrees of freedom of the weights where noise is heavy-tailed (Student's t).
@@ -96,6 +99,30 @@ impl Cells {
         self.time_s.push(self.sum_time * share);
         self.share.push(self.gathered as f64 / self.blocks as f64);
         (self.gathered, self.sum_time) = (0, 0.0);
+    }
+
+    /// The cells of a stretch of time, which begins at 0.
+    pub fn during(&self, stay: &Stay) -> Self {
+        let inside = |t: f64| stay.from_s <= t - 0.5 * self.length_s && t + 0.5 * self.length_s <= stay.to_s;
+        let kept: Vec<usize> = (0..self.count()).filter(|&b| inside(self.time_s[b])).collect();
+        Self {
+            time_s: kept.iter().map(|&b| self.time_s[b] - stay.from_s).collect(),
+            values: self.values.iter().map(|line| kept.iter().map(|&b| line[b]).collect()).collect(),
+            share: kept.iter().map(|&b| self.share[b]).collect(),
+            ..self.clone()
+        }
+    }
+
+    /// All cells, empty outside some stretches of time: they say nothing there.
+    pub fn only_during(mut self, stays: &[Stay]) -> Self {
+        for b in 0..self.count() {
+            let t = self.time_s[b];
+            if !stays.iter().any(|stay| stay.from_s < t && t < stay.to_s) {
+                self.share[b] = 0.0;
+                self.values.iter_mut().for_each(|line| line[b] = Complex64::ZERO);
+            }
+        }
+        self
     }
 
     pub fn count(&self) -> usize {
@@ -167,7 +194,7 @@ pub(super) fn track(cells: &Cells, clear: &[u32], reach_hz: f64, duration_s: f64
     let mut found = None;
     for round in 0..ROUNDS {
         let phases = measured_phases(cells, &phase, phase_sd, start.lead(), round >= 1);
-        let wander = phases.likeliest_wander();
+        let wander = phases.likeliest_wander().min(quickest_wander(&phases));
         let smoothed = phases.smoothed(wander);
         let count = phase.len() as f64;
         let moved =
@@ -181,6 +208,17 @@ pub(super) fn track(cells: &Cells, clear: &[u32], reach_hz: f64, duration_s: f64
     let advance = phases.advance(wander, duration_s);
     let lines = (0..cells.orders.len()).map(|i| standing(cells, i, &smoothed.phase_rad)).collect();
     Some(Tracked { smoothed, phases, wander, advance, lines })
+}
+
+/// The quickest wander that can be told from noise: over the smoother's time constant, the
+/// fourth root of R·Δ/q, the line must be told for itself. A quicker smoother follows the noise,
+/// and finds it the more likely the more it does.
+fn quickest_wander(phases: &Phases) -> f64 {
+    let count = phases.time_s.len();
+    let length_s = (phases.time_s[count - 1] - phases.time_s[0]).max(1e-9);
+    // Information on the phase in a second: 1/(R·Δ).
+    let in_a_second = phases.variance.iter().map(|variance| 1.0 / variance).sum::<f64>() / length_s;
+    in_a_second.powi(3) / (2.0 * TOLD_NATS).powi(4)
 }
 
 /// One measured phase a cell, by all significant harmonics together.
@@ -256,7 +294,7 @@ fn weighted_mean(
     robust: bool,
 ) -> (Complex64, f64, Option<Vec<f64>>) {
     let mean = mean_of(turned.iter().copied(), cells);
-    if !robust || turned.len() < 16 {
+    if !robust || turned.len() < 16 || cells.share.contains(&0.0) {
         return (mean, variance, None);
     }
     let mut mean = component_median(turned);
@@ -338,7 +376,7 @@ struct SearchLine {
 impl SearchLine {
     fn new(cells: &Cells, line: usize) -> Self {
         let values = &cells.values[line];
-        let most = LARGEST * median(&mut values.iter().map(|z| z.norm()).collect::<Vec<_>>());
+        let most = LARGEST * median(&mut values.iter().map(|z| z.norm()).filter(|size| *size > 0.0).collect::<Vec<_>>());
         let values: Vec<Complex64> =
             values.iter().map(|z| z * (most / z.norm().max(1e-30)).min(1.0)).collect();
         // Where limiting took noise away, the noise is what differs from cell to cell.
@@ -447,7 +485,11 @@ impl<'a> Search<'a> {
         } else {
             0.0
         };
-        let chance = self.lines.len() as f64 + (1.0 + 2.0 * reach_hz * length_s * top).ln() + WINDOW_COST;
+        // What the highest of so many sums of exponentials reaches by chance (after Laurent and
+        // Massart 2000, from memory, less what one exponential needs less).
+        let lines = self.lines.len() as f64;
+        let tries = (1.0 + 2.0 * reach_hz * length_s * top).ln();
+        let chance = lines + tries + (2.0 * (lines - 1.0) * tries).sqrt() + WINDOW_COST;
         Fit {
             middle_s: 0.5 * (self.cells.time_s[bounds.0] + self.cells.time_s[bounds.1 - 1]),
             offset_hz: (best as f64 - f64::from(steps) + shift) * step_hz,

@@ -47,6 +47,17 @@ const FAR: f64 = 0.02;
 /// notes, whose phase is set anew each time, do. Grids keep under 1 Hz/s in faults.
 const HASTY: f64 = 0.008;
 
+/// Shortest stay that tells, in seconds, of a comb and of a single line.
+const LEAST_STAY_S: f64 = 3.5;
+const LEAST_STAY_OF_ONE_LINE_S: f64 = 8.0;
+/// RMS swing of the amplitude of what comes and goes while it is there: a struck note fades.
+const MOST_SWELL_OF_A_STAY: f64 = 0.15;
+/// Evidence that a stay must give: as for 0.95, and more for having been picked.
+const CLEAR_STAY: f64 = 25.0;
+/// Change of frequency in a second, as a share of it: ten times what grids show day by day
+/// (common practice: some 10 mHz/s), since programme shakes the track; notes struck anew show more.
+const GRID_HASTE: f64 = 2e-3;
+
 /// How the frequency of a comb moves.
 #[derive(Debug, Clone, Copy, Default, PartialEq)]
 pub(super) struct Motion {
@@ -95,19 +106,12 @@ impl Verdict {
         motion: &Motion,
         company: Company,
     ) -> Self {
-        let heard: Vec<Heard> = heard_all_the_time(fine, tracked);
-        let alone = heard.iter().filter(|line| line.stands_alone());
-        let lasting: Vec<(u32, f64)> = alone.map(|line| (line.order, line.says())).collect();
-        if std::env::var("NWDBG").is_ok() {
-            for ((order, line), beside) in fine.orders.iter().zip(&tracked.lines).zip(standings(fine, tracked)) {
-                if line.lasting > 5.0 && (*order < 8 || line.lasting > 12.0) {
-                    eprintln!("  DBG {frequency_hz:.3} k{order} lasting {:.1} steadi {:.2} pres {:.2} thr {} beside {beside:.1?}", line.lasting, line.steadiness, line.presence, line.throughout);
-                }
-            }
-        }
-        let family = FAMILIES.iter().find(|f| f.from_hz <= frequency_hz && frequency_hz <= f.to_hz);
         let expected =
             nearest_supply(frequency_hz).is_some_and(|s| s.is_public() && s.is_usual(frequency_hz));
+        let heard: Vec<Heard> = heard_all_the_time(fine, tracked, expected);
+        let alone = heard.iter().filter(|line| line.stands_alone());
+        let lasting: Vec<(u32, f64)> = alone.map(|line| (line.order, line.says())).collect();
+        let family = FAMILIES.iter().find(|f| f.from_hz <= frequency_hz && frequency_hz <= f.to_hz);
         let searched_hz = if expected { EXPECTED_HZ } else { family.map_or(30.0, |f| f.to_hz - f.from_hz) };
         let tried = (searched_hz * duration_s.max(1.0) * 5.0).ln();
         let weighed: f64 = lasting.iter().map(|&(k, nats)| weight(k) * nats).sum();
@@ -122,16 +126,39 @@ impl Verdict {
             is_played(fine, tracked, &heard, company)
         };
         let hasty = motion.hz_per_s > HASTY * frequency_hz.min(100.0);
-        let plausible = are_a_supplys(&orders, frequency_hz) && !alone_far && !hasty && !played;
+        let plausible = could_be_all(&orders, frequency_hz) && !alone_far && !hasty && !played;
         let ambiguous = if plausible { other_fit(&orders, frequency_hz) } else { None };
         let chance = 1.0 / (1.0 + (-(evidence - EVEN) / 3.0).exp());
         let confidence =
             if plausible { below_ceiling(chance, frequency_hz, ambiguous.is_some()) } else { 0.1 * chance };
         let found = confidence >= 0.5;
-        if std::env::var("NWDBG").is_ok() {
-            eprintln!("DBG verdict {frequency_hz:.3} ev {evidence:.1} orders {orders:?} conf {confidence:.3} plaus {plausible} far {alone_far} hasty {hasty} played {played} wander {:.1e}", tracked.wander);
-        }
         Self { found, confidence, evidence, lasting: orders, ambiguous }
+    }
+}
+
+impl Verdict {
+    /// On hum that comes and goes, from a stretch in which it stands clear. That stretch was
+    /// picked for it, so more is asked: a comb of two orders or a long stay, a frequency as
+    /// steady as a grid's, no vibrato, and of what `goes` a level that does not fade.
+    pub fn of_a_stay(
+        fine: &Cells,
+        tracked: &Tracked,
+        frequency_hz: f64,
+        stay_s: f64,
+        motion: &Motion,
+        goes: bool,
+    ) -> Self {
+        let verdict = Self::of(fine, tracked, frequency_hz, stay_s, motion, Company::Alone);
+        let heard = heard_all_the_time(fine, tracked, true);
+        let shaken = heard.iter().filter(|line| line.beside.is_none_or(|beside| is_shaken(&beside))).count();
+        let least_s = if verdict.lasting.len() >= 2 { LEAST_STAY_S } else { LEAST_STAY_OF_ONE_LINE_S };
+        let clear = verdict.evidence >= CLEAR_STAY
+            && stay_s >= least_s
+            && is_usual(frequency_hz)
+            && 2 * shaken <= heard.len()
+            && !(goes && swell(fine, tracked, &verdict.lasting).is_none_or(|swell| swell > MOST_SWELL_OF_A_STAY))
+            && motion.hz_per_s <= GRID_HASTE * frequency_hz;
+        if clear { verdict } else { Self { found: false, confidence: 0.1 * verdict.confidence, ..verdict } }
     }
 }
 
@@ -162,14 +189,15 @@ impl Heard {
     }
 }
 
-fn heard_all_the_time(fine: &Cells, tracked: &Tracked) -> Vec<Heard> {
+/// Where no public supply is `expected`, even noise is no reason to claim one.
+fn heard_all_the_time(fine: &Cells, tracked: &Tracked, expected: bool) -> Vec<Heard> {
     let all = tracked.lines.iter().zip(standings(fine, tracked)).enumerate();
     let there = all.filter(|(_, (line, _))| line.steadiness >= STEADY && line.throughout && line.presence >= SELDOM);
     there
         .map(|(i, (line, beside))| Heard {
             order: fine.orders[i],
             lasting: line.lasting,
-            over_even: over_even_noise(fine, i, tracked),
+            over_even: expected.then(|| over_even_noise(fine, i, tracked)).flatten(),
             beside,
         })
         .filter(|line| line.lasting >= COUNTS || line.over_even.is_some_and(|over| over >= COUNTS))
@@ -217,7 +245,7 @@ fn below_ceiling(score: f64, frequency_hz: f64, ambiguous: bool) -> f64 {
 /// (rectifiers), or third and fifth; or multiples of the third or the sixth alone
 /// (three-phase loads); in its usual range the third and any other will do. Anything
 /// else is a comb of somebody's notes and their tempo.
-fn are_a_supplys(orders: &[u32], frequency_hz: f64) -> bool {
+pub(super) fn could_be_all(orders: &[u32], frequency_hz: f64) -> bool {
     let Some(supply) = nearest_supply(frequency_hz) else { return false };
     let has = |order: u32| orders.contains(&order);
     let usual = supply.is_usual(frequency_hz);
