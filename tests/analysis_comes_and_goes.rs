@@ -31,7 +31,8 @@ fn assert_found(analysis: &Analysis, frequency_hz: f64, share: f64) {
 fn a_pump_that_runs_for_a_third_of_the_time_is_found_and_told() {
     let analysis = of_gain(50.03, |t| f64::from(u8::from((10.0..20.0).contains(&t))), 1);
     assert_found(&analysis, 50.03, 1.0 / 3.0);
-    let told = |note: &String| note.contains("33 % of the time, from 10.0 s on") && note.contains("-26.0 dBFS");
+    let told =
+        |note: &String| note.contains("33 % of the time, from 10.0 s on") && note.contains("-26.0 dBFS");
     assert!(analysis.notes.iter().any(told), "{:?}", analysis.notes);
 }
 

@@ -56,7 +56,10 @@ fn finds_are_right_at_least_as_often_as_their_confidence_says() {
         println!("{from:.2} to {:.2} {count:6} {:6.2} {:6.2}", to.min(1.0), right / count, stated / count);
         // Chance alone strays by a standard deviation; of one find no share can be told.
         let strays = inside.iter().map(|a| a.confidence * (1.0 - a.confidence)).sum::<f64>().sqrt();
-        assert!(right >= stated - 2.0 * strays - 1.0, "{from} to {to}: {right} of {count}, {stated:.1} stated");
+        assert!(
+            right >= stated - 2.0 * strays - 1.0,
+            "{from} to {to}: {right} of {count}, {stated:.1} stated"
+        );
     }
     let silent: Vec<&Answer> = answers.iter().filter(|answer| answer.confidence < 0.5).collect();
     let right = silent.iter().filter(|answer| answer.is_right).count();

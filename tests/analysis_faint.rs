@@ -68,7 +68,11 @@ fn is_right(lines: &[(u32, f64)], over_db: f64, duration_s: f64, seed: u64) -> b
         && orders.contains(&lines[0].0)
         && orders.iter().all(|order| lines.iter().any(|(k, _)| k == order));
     if !is_right {
-        println!("{over_db} dB, {duration_s} s, seed {seed}, {frequency_hz:.3} Hz, {} lines: {orders:?} {:?}", lines.len(), analysis.mains);
+        println!(
+            "{over_db} dB, {duration_s} s, seed {seed}, {frequency_hz:.3} Hz, {} lines: {orders:?} {:?}",
+            lines.len(),
+            analysis.mains
+        );
     }
     is_right
 }

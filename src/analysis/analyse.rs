@@ -9,17 +9,17 @@ use super::comb::{Candidate, candidates, candidates_besides};
 use super::company::usual_beside;
 use super::findings::{Analysis, CaptureSummary, OtherSupply, TrackPoint};
 use super::folding::{hidden_supplies, is_half_rate};
-use super::likeliest::likeliest;
+use super::likeliest::{comes_and_goes, likeliest};
 use super::orders::OrderLevel;
+use super::passes::{Followed, Second, second_pass, survey, third_pass, tracked_apart};
 use super::passing::presence_note;
-use super::passes::{read_channel, second_pass, survey, third_pass, tracked_apart};
+use super::reading::read_channel;
 use super::reference::mean_frequency_hz;
 use super::spectrum::{Spectrum, SpectrumMeter};
 use super::spread::Wander;
 use super::supplies::nearest_supply;
 use super::survey::Surveyed;
 use super::tracker::Tracked;
-use super::verdict::could_be_all;
 use super::{AnalyseOptions, AnalysisError, PhaseTrack};
 use crate::capture::Capture;
 
@@ -152,8 +152,23 @@ fn analyse_one(
             channel,
         ),
     };
-    let best = if duration_s >= SHORTEST_S { likeliest(&survey, found, rate_hz) } else { None };
-    let Some(best) = &best else {
+    let long_enough = duration_s >= SHORTEST_S;
+    let mut best = if long_enough { likeliest(&survey, found, rate_hz) } else { None };
+    let mut seen = match &best {
+        Some(best) => Some(second_pass(capture, channel, best, &survey, &mut |p| progress((1.0 + p) / 3.0))?),
+        None => None,
+    };
+    // What is not there all the time may be there at times.
+    if long_enough
+        && !seen.as_ref().is_some_and(Second::found)
+        && let Some(candidate) = comes_and_goes(&survey)
+    {
+        let again = second_pass(capture, channel, &candidate, &survey, &mut |p| progress((1.0 + p) / 3.0))?;
+        if again.found() || seen.is_none() {
+            (best, seen) = (Some(candidate), Some(again));
+        }
+    }
+    let (Some(best), Some(seen)) = (&best, seen) else {
         let mut spectrum = SpectrumMeter::new(rate_hz, duration_s);
         read_channel(capture, channel, &mut |samples| spectrum.push(samples), &mut |p| {
             progress((1.0 + 2.0 * p) / 3.0);
@@ -161,7 +176,6 @@ fn analyse_one(
         one.spectrum = spectrum.finish();
         return Ok(one);
     };
-    let seen = second_pass(capture, channel, best, &survey, &mut |p| progress((1.0 + p) / 3.0))?;
     one.spectrum = seen.spectrum;
     one.confidence = seen.verdict.as_ref().map_or(0.0, |verdict| verdict.confidence);
     one.evidence = seen.verdict.as_ref().map_or(0.0, |verdict| verdict.evidence);
@@ -173,6 +187,7 @@ fn analyse_one(
     let besides = candidates_besides(&survey, rate_hz, best);
     let mut reference = seen.reference;
     let mut tracked = tracked;
+    let mut cells = Some(&seen.cells);
     let main_hz = mean_frequency_hz(&reference, &tracked, duration_s);
     if let Some(other) = usual_beside(&besides, main_hz).next() {
         // A first track that the other shakes is no reference: its mean is, or the survey's path.
@@ -182,15 +197,17 @@ fn analyse_one(
             reference.clone()
         };
         if let Some(apart) = tracked_apart(capture, channel, &first, &verdict, other.mean_hz())? {
-            tracked = Tracked { lines: tracked.lines, ..apart };
+            tracked = Tracked { orders: tracked.orders, lines: tracked.lines, ..apart };
             reference = first;
+            cells = None;
         }
     }
-    let mut hum = third_pass(capture, channel, &reference, &tracked, &verdict, &besides, &mut |p| {
+    let followed = Followed { reference: &reference, tracked: &tracked, cells };
+    let mut hum = third_pass(capture, channel, &followed, &verdict, &besides, &mut |p| {
         progress((2.0 + p) / 3.0);
     })?;
-    if !could_be_all(&hum.listed, hum.frequency_hz) {
-        // The lines that made the find are not among those that stand along the whole track.
+    if is_a_notes(&hum.listed) {
+        // What made the find fades along the whole track.
         one.confidence *= 0.1;
         progress(1.0);
         return Ok(one);
@@ -221,6 +238,12 @@ fn analyse_one(
     one.hum = Some(hum);
     progress(1.0);
     Ok(one)
+}
+
+/// Whether what is left in the account is one line above the third, or nothing but lines above
+/// the sixth: no supply shows those alone, and they are multiples of many notes.
+fn is_a_notes(listed: &[u32]) -> bool {
+    matches!(listed, [order] if *order > 3) || listed.iter().all(|order| *order > 6)
 }
 
 fn best_of(found: &[Candidate]) -> Option<&Candidate> {

@@ -110,7 +110,13 @@ impl<'a> View<'a> {
         let orders: Vec<u32> =
             self.orders(steady).filter(|&(_, line)| standing(line) > 0.0).map(|(k, _)| k).collect();
         let path_hz = vec![steady; self.survey.ratios.len()];
-        Some(Candidate { path_hz, score: self.steady_score(steady) * prior(steady), power: 0.0, orders, stays: None })
+        Some(Candidate {
+            path_hz,
+            score: self.steady_score(steady) * prior(steady),
+            power: 0.0,
+            orders,
+            stays: None,
+        })
     }
 
     fn grid(&self, family: &Family) -> Vec<f64> {

@@ -41,17 +41,6 @@ pub(super) fn likeliest(survey: &Surveyed, found: Vec<Candidate>, rate_hz: f64) 
         });
         tried.extend(followed(survey, faint.collect()));
     }
-    if !tried.iter().any(|trial| trial.verdict.found)
-        && let Some(passing) = passing(survey)
-    {
-        return Some(Candidate {
-            path_hz: vec![passing.frequency_hz; segments],
-            score: 0.0,
-            power: 0.0,
-            orders: passing.orders,
-            stays: Some(passing.stays),
-        });
-    }
     // The survey gives one comb of all public supplies; there may be two.
     let usual = |trial: &Trial| is_public(trial) && is_usual(trial.frequency_hz);
     if let Some(first) = tried.iter().find(|trial| usual(trial)) {
@@ -87,6 +76,18 @@ pub(super) fn likeliest(survey: &Surveyed, found: Vec<Candidate>, rate_hz: f64) 
     };
     let chosen = tried.iter().position(surveyed).unwrap_or(chosen);
     (chosen < tried.len()).then(|| tried.swap_remove(chosen).candidate)
+}
+
+/// The comb that stands clear for a part of the time, if there is one.
+pub(super) fn comes_and_goes(survey: &Surveyed) -> Option<Candidate> {
+    let passing = passing(survey).filter(|_| survey.rms > SILENT)?;
+    Some(Candidate {
+        path_hz: vec![passing.frequency_hz; survey.ratios.len()],
+        score: 0.0,
+        power: 0.0,
+        orders: passing.orders,
+        stays: Some(passing.stays),
+    })
 }
 
 fn followed(survey: &Surveyed, candidates: Vec<Candidate>) -> Vec<Trial> {

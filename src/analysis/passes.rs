@@ -5,25 +5,25 @@ use super::besides::{each_line_once, other_supply};
 use super::comb::Candidate;
 use super::company::{APART_HOP_S, are_shared, usual_beside};
 use super::findings::TrackPoint;
-use super::gather::{Gather, Gathered};
+use super::gather::{Gather, Gathered, kept_orders};
 use super::likeliest::reach_hz;
 use super::orders::OrderMeter;
-use super::reference::{mean_frequency_hz, motion, reference_frequency_hz, reference_track};
+use super::passing::{followed, with_gaps};
+use super::reading::{read_all, read_channel};
+use super::reference::{mean_frequency_hz, motion, reference_frequency_hz, reference_track, refined_track};
+use super::reread::levels_of;
 use super::spectrum::{Spectrum, SpectrumMeter};
 use super::spread::Wander;
-use super::passing::{followed, with_gaps};
 use super::stays::Stays;
 use super::supplies::nearest_supply;
 use super::survey::{ChannelSurvey, Surveyed};
-use super::tracker::{Tracked, track};
+use super::tracker::{Cells, Tracked, track};
 use super::verdict::{Company, Verdict};
 use super::{AnalysisError, PhaseTrack};
 use crate::capture::Capture;
 use rayon::prelude::*;
 use std::f64::consts::TAU;
 
-/// Frames read at a time.
-const BLOCK_FRAMES: usize = 1 << 16;
 /// Harmonics are measured up to this frequency.
 const TOP_HZ: f64 = 5000.0;
 /// and up to this share of the sample rate.
@@ -45,41 +45,15 @@ pub(super) fn survey(
         .filter(|&channel| only.is_none_or(|wanted| wanted == channel + 1))
         .map(|channel| (channel, ChannelSurvey::new(rate_hz, format.duration_s())))
         .collect();
-    each_block(
-        capture,
-        &mut |planes| surveys.par_iter_mut().for_each(|(channel, survey)| survey.push(&planes[*channel])),
-        progress,
-    )?;
-    Ok(surveys.into_par_iter().map(|(channel, survey)| (channel, survey.finish())).collect())
-}
-
-fn each_block(
-    capture: &mut dyn Capture,
-    take: &mut dyn FnMut(&[Vec<f64>]),
-    progress: &mut dyn FnMut(f64),
-) -> Result<(), AnalysisError> {
-    let format = capture.format().clone();
-    let mut planes = vec![Vec::new(); format.channels];
-    capture.rewind()?;
-    let mut read = 0u64;
-    loop {
-        let frames = capture.read_block(&mut planes, BLOCK_FRAMES)?;
-        if frames == 0 {
-            return Ok(());
-        }
-        take(&planes);
-        read += frames as u64;
-        progress((read as f64 / format.frames.max(1) as f64).min(1.0));
+    if let [(channel, survey)] = &mut surveys[..] {
+        read_channel(capture, *channel, &mut |samples| survey.push(samples), progress)?;
+    } else {
+        let mut take = |planes: &[Vec<f64>]| {
+            surveys.par_iter_mut().for_each(|(channel, survey)| survey.push(&planes[*channel]));
+        };
+        read_all(capture, &mut take, progress)?;
     }
-}
-
-pub(super) fn read_channel(
-    capture: &mut dyn Capture,
-    channel: usize,
-    take: &mut dyn FnMut(&[f64]),
-    progress: &mut dyn FnMut(f64),
-) -> Result<(), AnalysisError> {
-    each_block(capture, &mut |planes| take(&planes[channel]), progress)
+    Ok(surveys.into_par_iter().map(|(channel, survey)| (channel, survey.finish())).collect())
 }
 
 /// What pass 2 gives.
@@ -90,6 +64,14 @@ pub(super) struct Second {
     pub verdict: Option<Verdict>,
     /// Where the hum is there, if it comes and goes.
     pub stays: Option<Stays>,
+    /// The cells that it was tracked in.
+    pub cells: Cells,
+}
+
+impl Second {
+    pub fn found(&self) -> bool {
+        self.tracked.is_some() && self.verdict.as_ref().is_some_and(|verdict| verdict.found)
+    }
 }
 
 pub(super) fn second_pass(
@@ -102,7 +84,8 @@ pub(super) fn second_pass(
     let format = capture.format().clone();
     let (rate_hz, duration_s) = (f64::from(format.sample_rate_hz), format.duration_s());
     let reference = reference_track(best, &survey.times_s, duration_s);
-    let orders = orders_below_top(best.mean_hz(), rate_hz);
+    let all = orders_below_top(best.mean_hz(), rate_hz);
+    let orders = kept_orders(all, &best.orders, best.mean_hz(), duration_s);
     let mut gather = Gather::new(rate_hz, &reference, &orders, format.frames);
     let mut spectrum = SpectrumMeter::new(rate_hz, duration_s);
     read_channel(
@@ -117,10 +100,17 @@ pub(super) fn second_pass(
     let spectrum = spectrum.finish();
     if let Some(stays) = &best.stays {
         let gathered = Gathered { cells, fine };
-        let passing = followed(&gathered, stays, &best.orders, reach_hz(survey, best), &reference, (rate_hz, duration_s));
+        let passing = followed(
+            &gathered,
+            stays,
+            &best.orders,
+            reach_hz(survey, best),
+            &reference,
+            (rate_hz, duration_s),
+        );
         let stays = passing.as_ref().map(|passing| passing.stays.clone());
         let (tracked, verdict) = passing.map(|passing| (passing.tracked, passing.verdict)).unzip();
-        return Ok(Second { reference, spectrum, tracked, verdict, stays });
+        return Ok(Second { reference, spectrum, tracked, verdict, cells: gathered.cells, stays });
     }
     let tracked = track(&cells, &best.orders, reach_hz(survey, best), duration_s);
     let verdict = tracked.as_ref().map(|tracked| {
@@ -141,7 +131,8 @@ pub(super) fn second_pass(
         with_gaps(survey, &gathered, verdict, &reference, (found_hz, rate_hz, duration_s))
     });
     let (stays, judged) = gaps.unzip();
-    Ok(Second { reference, spectrum, tracked, verdict: judged.or(verdict), stays })
+    let cells = gathered.cells;
+    Ok(Second { reference, spectrum, tracked, verdict: judged.or(verdict), cells, stays })
 }
 
 /// The offset from a first reference by the orders that another supply does not have, in blocks
@@ -184,31 +175,6 @@ fn orders_below_top(fundamental_hz: f64, rate_hz: f64) -> Vec<u32> {
     (1..=((top_hz / fundamental_hz) as u32).max(1)).collect()
 }
 
-/// Reference and offset as one track with knots at the cells and both ends.
-fn refined_track(reference: &PhaseTrack, tracked: &Tracked, duration_s: f64) -> PhaseTrack {
-    let cells = &tracked.phases.time_s;
-    let smoothed = &tracked.smoothed;
-    let last = cells.len() - 1;
-    let mut track = PhaseTrack { time_s: Vec::new(), phase_rad: Vec::new(), frequency_hz: Vec::new() };
-    let mut knot = |time_s: f64, cell: usize| {
-        let offset = smoothed.phase_rad[cell] + smoothed.omega[cell] * (time_s - cells[cell]);
-        track.time_s.push(time_s);
-        track.phase_rad.push(reference.phase_at(time_s) + offset);
-        track.frequency_hz.push(reference_frequency_hz(reference, time_s) + smoothed.omega[cell] / TAU);
-    };
-    knot(0.0, 0);
-    for (i, &time_s) in cells.iter().enumerate() {
-        knot(time_s, i);
-    }
-    if cells[last] < duration_s {
-        knot(duration_s, last);
-    }
-    // Phase 0 at the start, as in a track of constant frequency.
-    let start = track.phase_rad[0];
-    track.phase_rad.iter_mut().for_each(|phase| *phase -= start);
-    track
-}
-
 fn track_points(reference: &PhaseTrack, tracked: &Tracked) -> Vec<TrackPoint> {
     let cells = &tracked.phases.time_s;
     let together = cells.len().div_ceil(TRACK_POINTS);
@@ -227,21 +193,32 @@ fn track_points(reference: &PhaseTrack, tracked: &Tracked) -> Vec<TrackPoint> {
         .collect()
 }
 
+/// A comb as it was followed.
+pub(super) struct Followed<'a> {
+    pub reference: &'a PhaseTrack,
+    pub tracked: &'a Tracked,
+    /// The cells of all its orders, where it was followed in them.
+    pub cells: Option<&'a Cells>,
+}
+
+/// Levels along the track, and other supplies.
 pub(super) fn third_pass(
     capture: &mut dyn Capture,
     channel: usize,
-    reference: &PhaseTrack,
-    tracked: &Tracked,
+    followed: &Followed,
     verdict: &Verdict,
     besides: &[Candidate],
     progress: &mut dyn FnMut(f64),
 ) -> Result<Hum, AnalysisError> {
+    let Followed { reference, tracked, .. } = *followed;
     let format = capture.format().clone();
     let (rate_hz, duration_s) = (f64::from(format.sample_rate_hz), format.duration_s());
     let phase = refined_track(reference, tracked, duration_s);
     let frequency_hz = mean_frequency_hz(reference, tracked, duration_s);
     let orders = orders_below_top(frequency_hz, rate_hz);
-    let mut meter = OrderMeter::new(rate_hz, &phase, &orders);
+    let whole = followed.cells.filter(|cells| cells.orders == orders);
+    let read = whole.and_then(|cells| levels_of(cells, tracked, reference, &phase));
+    let mut meter = read.is_none().then(|| OrderMeter::new(rate_hz, &phase, &orders));
     let mut others: Vec<(&Candidate, Gather)> = besides
         .iter()
         .map(|candidate| {
@@ -257,21 +234,20 @@ pub(super) fn third_pass(
             (candidate, gather)
         })
         .collect();
-    read_channel(
-        capture,
-        channel,
-        &mut |samples| {
-            meter.push(samples);
+    // Where the cells of the second pass tell the levels, and nothing else hums, that is all.
+    if meter.is_some() || !others.is_empty() {
+        let mut take = |samples: &[f64]| {
+            meter.iter_mut().for_each(|meter| meter.push(samples));
             others.iter_mut().for_each(|(_, gather)| gather.push(samples));
-        },
-        progress,
-    )?;
-    let levels = meter.finish();
+        };
+        read_channel(capture, channel, &mut take, progress)?;
+    }
+    let levels = read.or_else(|| meter.map(OrderMeter::finish)).unwrap_or_default();
     // A line that stands out along the track and is there all the time; one
     // whose phasors the tracker never saw as steady is somebody's note.
     let steady = |order: u32| {
-        let i = order as usize - 1;
-        tracked.lines.get(i).is_some_and(|line| line.lasting > 2.0 && line.steadiness > 0.5)
+        let followed = tracked.line_of(order);
+        followed.is_none_or(|line| line.lasting > 2.0 && line.steadiness > 0.5)
     };
     let listed = levels
         .iter()

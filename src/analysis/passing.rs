@@ -19,7 +19,7 @@ const MOST_OF_THE_TIME: f64 = 0.9;
 /// Share of the frequency by which it may be off a reference.
 const REACH: f64 = 0.006;
 /// Two accounts of one supply agree in frequency to this share.
-const SAME: f64 = 0.004;
+const SAME: f64 = 0.001;
 
 /// A comb that comes and goes, followed.
 pub(super) struct Passing {
@@ -61,8 +61,10 @@ pub(super) fn with_gaps(
     reference: &PhaseTrack,
     (frequency_hz, rate_hz, duration_s): (f64, f64, f64),
 ) -> Option<(Stays, Verdict)> {
-    let passing = passing(survey).filter(|passing| (passing.frequency_hz / frequency_hz - 1.0).abs() < SAME)?;
-    let stays = with_sharp_ends(&passing.stays, &gathered.fine, &passing.orders, REACH_S);
+    let passing =
+        passing(survey).filter(|passing| (passing.frequency_hz / frequency_hz - 1.0).abs() < SAME)?;
+    // Louder programme may stand clear on another order: what was found tells where it is.
+    let stays = with_sharp_ends(&passing.stays, &gathered.fine, &found.lasting, REACH_S);
     let share = stays.share(duration_s);
     if stays.all.is_empty() || share >= ALL_THE_TIME {
         return None;

@@ -17,11 +17,14 @@ use super::window::BLACKMAN_HARRIS;
 use num_complex::Complex64;
 use rayon::prelude::*;
 use realfft::{RealFftPlanner, RealToComplex};
+use std::array;
 use std::f64::consts::{PI, TAU};
 use std::sync::Arc;
 
 /// Bins on either side that the kernel reaches.
 const KERNEL_REACH: f64 = 4.0;
+/// Bins that it weighs.
+const NODES: usize = 8;
 /// Shape of the kernel for an FFT twice as long as the block.
 const KERNEL_BETA: f64 = 2.30 * 2.0 * KERNEL_REACH;
 /// Blocks handed to the cores at a time.
@@ -59,6 +62,7 @@ struct BlockPlan {
     orders: Vec<u32>,
     /// Decimator's gain at each order's mean frequency.
     gains: Vec<f64>,
+    kernel: KernelTable,
 }
 
 impl PhasorBank {
@@ -136,7 +140,9 @@ impl BlockPlan {
         let weights = window.iter().zip(&taper).map(|(w, t)| w / t).collect();
         let fft = RealFftPlanner::new().plan_fft_forward(2 * length);
         let moments = [moment(2), moment(4), moment(6)];
-        Self { rate_hz, hop, weights, window_sum, moments, fft, orders: orders.to_vec(), gains }
+        let orders = orders.to_vec();
+        let kernel = KernelTable::new();
+        Self { rate_hz, hop, weights, window_sum, moments, fft, orders, gains, kernel }
     }
 
     fn transform(
@@ -161,44 +167,38 @@ impl BlockPlan {
         let after = reference.phase_at(middle_s + hop_s);
         let frequency_hz = (after - before) / (2.0 * TAU * hop_s);
         let bend = (after - 2.0 * phase + before) / (2.0 * hop_s * hop_s);
-        let values = self
-            .orders
-            .iter()
-            .zip(&self.gains)
-            .map(|(&order, gain)| {
-                let k = f64::from(order);
-                let raw = self.at_frequency(bins, k * frequency_hz);
-                let turned = raw * Complex64::cis(-(k * phase).rem_euclid(TAU));
-                turned * (2.0 / (self.window_sum * gain)) / self.chirp_gain(k * bend)
-            })
-            .collect();
-        BlockPhasors { time_s: middle_s, values }
+        // In turns, so that k times it loses nothing.
+        let turns = (phase / TAU).rem_euclid(1.0);
+        let scale = 2.0 / self.window_sum;
+        let orders = self.orders.iter().zip(&self.gains);
+        let values = orders.map(|(&order, gain)| {
+            let k = f64::from(order);
+            let raw = self.at_frequency(bins, k * frequency_hz);
+            let turned = raw * Complex64::cis(-TAU * (k * turns).fract());
+            turned * (scale / gain) / self.chirp_gain(k * bend)
+        });
+        BlockPhasors { time_s: middle_s, values: values.collect() }
     }
 
     /// Σ v[n] x[n] e^(−j2πfn/rate), n counted from the middle of the block.
     fn at_frequency(&self, bins: &[Complex64], frequency_hz: f64) -> Complex64 {
         let size = 8 * self.hop as i64;
         let at = frequency_hz * size as f64 / self.rate_hz;
-        let first = (at - KERNEL_REACH).ceil() as i64;
-        let last = (at + KERNEL_REACH).floor() as i64;
-        let mut sum = Complex64::ZERO;
-        for m in first..=last {
-            let wrapped = m.rem_euclid(size);
-            let bin = if wrapped <= size / 2 {
-                bins[wrapped as usize]
-            } else {
-                bins[(size - wrapped) as usize].conj()
-            };
-            // The middle of the block is a quarter of the FFT from its start: j^m.
-            let turned = match m.rem_euclid(4) {
-                0 => bin,
-                1 => Complex64::new(-bin.im, bin.re),
-                2 => -bin,
-                _ => Complex64::new(bin.im, -bin.re),
-            };
-            sum += turned * kernel(at - m as f64);
+        let below = at.floor();
+        let weights = self.kernel.weights(at - below);
+        let first = below as i64 - (NODES as i64 / 2 - 1);
+        let inside = usize::try_from(first).ok().and_then(|from| bins.get(from..from + NODES));
+        let sum = match inside {
+            Some(nodes) => quarter_turned_sum(|i| nodes[i], &weights),
+            None => quarter_turned_sum(|i| wrapped(bins, first + i as i64), &weights),
+        };
+        // The middle of the block is a quarter of the FFT from its start: j^m.
+        match first.rem_euclid(4) {
+            0 => sum,
+            1 => Complex64::new(-sum.im, sum.re),
+            2 => -sum,
+            _ => Complex64::new(sum.im, -sum.re),
         }
-        sum
     }
 
     /// Gain of e^(j·bend·t²) under the window: its average.
@@ -218,6 +218,55 @@ impl BlockPlan {
             weight += w;
         }
         sum / weight
+    }
+}
+
+/// A bin of the whole transform of which `bins` is the half up to half the rate.
+fn wrapped(bins: &[Complex64], m: i64) -> Complex64 {
+    let size = 2 * (bins.len() as i64 - 1);
+    let wrapped = m.rem_euclid(size);
+    if wrapped <= size / 2 { bins[wrapped as usize] } else { bins[(size - wrapped) as usize].conj() }
+}
+
+/// Σ j^i·wᵢ·zᵢ.
+fn quarter_turned_sum(node: impl Fn(usize) -> Complex64, weights: &[f64; NODES]) -> Complex64 {
+    let (mut even, mut odd) = (Complex64::ZERO, Complex64::ZERO);
+    for i in (0..NODES).step_by(4) {
+        even += node(i) * weights[i] - node(i + 2) * weights[i + 2];
+        odd += node(i + 1) * weights[i + 1] - node(i + 3) * weights[i + 3];
+    }
+    Complex64::new(even.re - odd.im, even.im + odd.re)
+}
+
+/// The kernel at the eight bins around a frequency, as parabolas over short pieces of
+/// the way from one bin to the next: within 1e-9 of it.
+struct KernelTable {
+    pieces: Vec<[[f64; NODES]; 3]>,
+}
+
+/// Pieces of a bin.
+const PIECES: usize = 512;
+
+impl KernelTable {
+    fn new() -> Self {
+        let half = 0.5 / PIECES as f64;
+        let piece = |i: usize| {
+            let middle = (i as f64 + 0.5) / PIECES as f64;
+            let at = |offset: f64, n: usize| kernel(middle + offset + NODES as f64 / 2.0 - 1.0 - n as f64);
+            let slope = |n| (at(half, n) - at(-half, n)) / (2.0 * half);
+            let bend = |n| (at(half, n) - 2.0 * at(0.0, n) + at(-half, n)) / (2.0 * half * half);
+            [array::from_fn(|n| at(0.0, n)), array::from_fn(slope), array::from_fn(bend)]
+        };
+        Self { pieces: (0..PIECES).map(piece).collect() }
+    }
+
+    /// Weights of the bins from 3 below to 4 above, `share` (0 to 1) past the bin below.
+    fn weights(&self, share: f64) -> [f64; NODES] {
+        let at = share * PIECES as f64;
+        let i = (at as usize).min(PIECES - 1);
+        let t = (at - i as f64 - 0.5) / PIECES as f64;
+        let [constant, linear, square] = &self.pieces[i];
+        array::from_fn(|n| constant[n] + t * (linear[n] + t * square[n]))
     }
 }
 
@@ -281,6 +330,18 @@ mod tests {
         blocks.extend(bank.finish());
         assert_eq!(blocks.len(), bank.blocks_in(samples.len() as u64));
         blocks
+    }
+
+    #[test]
+    fn the_table_is_the_kernel() {
+        let table = KernelTable::new();
+        for i in 0..2000 {
+            let share = f64::from(i) / 2000.0;
+            for (n, weight) in table.weights(share).into_iter().enumerate() {
+                let want = kernel(share + 3.0 - n as f64);
+                assert!((weight - want).abs() < 2e-9, "{share}, bin {n}: {weight} for {want}");
+            }
+        }
     }
 
     #[test]

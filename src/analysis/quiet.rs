@@ -15,7 +15,7 @@ const FEWEST: usize = 12;
 /// Nats that a stretch of its own wins.
 const WON_IN_ONE: f64 = 1.0;
 /// Standard deviations by which even noise may seem uneven.
-const UNEVEN: f64 = 2.5;
+const UNEVEN: f64 = 3.0;
 
 /// Power over noise in 1/T of a line of the fine cells, from means over time and less what
 /// following the noise wins, where that is even; `None` where it is not, or the cells are too few to tell.

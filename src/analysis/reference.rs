@@ -33,6 +33,31 @@ pub(super) fn reference_track(candidate: &Candidate, times_s: &[f64], duration_s
     PhaseTrack { time_s, phase_rad, frequency_hz }
 }
 
+/// Reference and offset as one track with knots at the cells and both ends.
+pub(super) fn refined_track(reference: &PhaseTrack, tracked: &Tracked, duration_s: f64) -> PhaseTrack {
+    let cells = &tracked.phases.time_s;
+    let smoothed = &tracked.smoothed;
+    let last = cells.len() - 1;
+    let mut track = PhaseTrack { time_s: Vec::new(), phase_rad: Vec::new(), frequency_hz: Vec::new() };
+    let mut knot = |time_s: f64, cell: usize| {
+        let offset = smoothed.phase_rad[cell] + smoothed.omega[cell] * (time_s - cells[cell]);
+        track.time_s.push(time_s);
+        track.phase_rad.push(reference.phase_at(time_s) + offset);
+        track.frequency_hz.push(reference_frequency_hz(reference, time_s) + smoothed.omega[cell] / TAU);
+    };
+    knot(0.0, 0);
+    for (i, &time_s) in cells.iter().enumerate() {
+        knot(time_s, i);
+    }
+    if cells[last] < duration_s {
+        knot(duration_s, last);
+    }
+    // Phase 0 at the start, as in a track of constant frequency.
+    let start = track.phase_rad[0];
+    track.phase_rad.iter_mut().for_each(|phase| *phase -= start);
+    track
+}
+
 pub(super) fn mean_frequency_hz(reference: &PhaseTrack, tracked: &Tracked, duration_s: f64) -> f64 {
     let carried = reference.phase_at(duration_s) - reference.phase_at(0.0);
     (carried + tracked.advance.phase_rad) / (TAU * duration_s)

@@ -6,8 +6,11 @@ use num_complex::Complex64;
 use realfft::{RealFftPlanner, RealToComplex};
 use std::sync::Arc;
 
-/// Longest segment in seconds.
+/// Longest segment in seconds, and in samples: the transform of more takes too much memory.
 const SEGMENT_S: f64 = 4.0;
+const LONGEST_SEGMENT: usize = 1 << 18;
+/// About so many segments are looked at in a long recording, evenly spread.
+const SEGMENTS: usize = 64;
 
 /// A spectrum for charts.
 #[derive(Debug, Clone, PartialEq, Default)]
@@ -25,6 +28,10 @@ pub struct Spectrum {
 pub struct SpectrumMeter {
     sample_rate_hz: f64,
     segment: usize,
+    /// Samples from one segment to the next.
+    step: usize,
+    /// Samples still to go by before the next segment.
+    skip: usize,
     window: Vec<f64>,
     window_sum: f64,
     fft: Arc<dyn RealToComplex<f64>>,
@@ -37,14 +44,19 @@ pub struct SpectrumMeter {
 }
 
 impl SpectrumMeter {
-    /// For a recording of `duration_s`: segments of 4 s, or of the whole if it is shorter.
+    /// For a recording of `duration_s`: segments of 4 s (of 2¹⁸ samples from 64 kHz up), or of the
+    /// whole if it is shorter.
     pub fn new(sample_rate_hz: f64, duration_s: f64) -> Self {
-        let segment = ((SEGMENT_S.min(duration_s) * sample_rate_hz) as usize).max(16) & !1;
+        let segment = ((SEGMENT_S.min(duration_s) * sample_rate_hz) as usize).clamp(16, LONGEST_SEGMENT) & !1;
+        // Under a flat top three segments in the length of one lose little.
+        let step = (segment / 3).max((duration_s * sample_rate_hz) as usize / SEGMENTS).max(1);
         let window = FLAT_TOP.samples(segment);
         let fft = RealFftPlanner::new().plan_fft_forward(segment);
         Self {
             sample_rate_hz,
             segment,
+            step,
+            skip: 0,
             window_sum: window.iter().sum(),
             window,
             input: fft.make_input_vec(),
@@ -59,15 +71,17 @@ impl SpectrumMeter {
 
     /// Takes the next samples.
     pub fn push(&mut self, samples: &[f64]) {
-        self.held.extend_from_slice(samples);
-        // Under a flat top three segments in the length of one lose little.
-        let step = (self.segment / 3).max(1);
+        let passed = self.skip.min(samples.len());
+        self.skip -= passed;
+        self.held.extend_from_slice(&samples[passed..]);
         let mut from = 0;
         while from + self.segment <= self.held.len() {
             self.add_segment(from);
-            from += step;
+            from += self.step;
         }
-        self.held.drain(..from);
+        let dropped = from.min(self.held.len());
+        self.held.drain(..dropped);
+        self.skip += from - dropped;
     }
 
     /// The average so far; silence where nothing was long enough.

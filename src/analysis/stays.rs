@@ -29,6 +29,8 @@ const THERE: f64 = 0.1;
 /// The level near an end is that of so many seconds, and so far inside it is surely there.
 const NEAR_END_S: f64 = 2.5;
 const INSIDE_S: f64 = 1.3;
+/// Longest gap within a stay, in seconds.
+const DROPOUT_S: f64 = 0.75;
 
 /// A stretch of time.
 #[derive(Debug, Clone, Copy, PartialEq)]
@@ -238,12 +240,19 @@ impl<'a> Comb<'a> {
         let (head, tail) = self.near_ends(stay)?;
         let inside_s = (0.5 * stay.length_s()).min(INSIDE_S);
         let (first, last) = (self.at(stay.from_s + inside_s), self.at(stay.to_s - inside_s));
-        let gone = |least: f64| move |b: &usize| self.power[*b] < THERE * least;
+        // A dropout of a moment is no end.
+        let lasting = ((DROPOUT_S / self.cell_s) as usize).max(1);
+        let is_low = |b: usize, least: f64| self.power[b] < THERE * least;
         // From a little inside outwards, over the survey's own end, until it is gone.
         let earliest = self.at(stay.from_s - reach_s);
-        let from = (earliest..first).rev().find(gone(head)).map_or(earliest, |b| b + 1);
+        let from = (earliest..first)
+            .rev()
+            .find(|&b| (b.saturating_sub(lasting)..=b).all(|b| is_low(b, head)))
+            .map_or(earliest, |b| b + 1);
         let latest = self.at(stay.to_s + reach_s);
-        let to = (last..latest).find(gone(tail)).unwrap_or(latest);
+        let to = (last..latest)
+            .find(|&b| (b..(b + lasting).min(self.power.len())).all(|b| is_low(b, tail)))
+            .unwrap_or(latest);
         let half_s = 0.5 * self.cell_s;
         (from < to).then(|| Stay { from_s: self.times_s[from] - half_s, to_s: self.times_s[to - 1] + half_s })
     }

@@ -9,13 +9,16 @@
 
 use super::kalman::{Advance, Phases, Smoothed};
 use super::phasors::{BlockPhasors, block_response};
-use super::stays::Stay;
 use super::presence::{is_there_throughout, share_present};
+use super::stays::Stay;
 use num_complex::Complex64;
+use rayon::prelude::*;
 use std::f64::consts::{LN_2, TAU};
 
 /// Longest window of the search in seconds.
 const LONGEST_WINDOW_S: f64 = 32.0;
+/// Offsets that the search tries side by side.
+const TOGETHER: usize = 8;
 /// Rounds of the last step.
 const ROUNDS: usize = 7;
 /// A harmonic counts from this ratio of power to noise in 1/T.
@@ -129,6 +132,11 @@ impl Cells {
         self.time_s.len()
     }
 
+    /// Cells but for a last one that is short.
+    pub fn whole(&self) -> usize {
+        self.share.iter().take_while(|share| **share == 1.0).count()
+    }
+
     /// What a cell reads of a line so far off its reference, against one on it.
     pub fn response(&self, offset_hz: f64) -> f64 {
         let hop_s = self.length_s / self.blocks as f64;
@@ -162,8 +170,17 @@ pub(super) struct Tracked {
     pub wander: f64,
     /// Advance of the offset over the capture.
     pub advance: Advance,
-    /// How each order stands, in the sequence of the orders.
+    /// Orders followed.
+    pub orders: Vec<u32>,
+    /// How each stands, in their sequence.
     pub lines: Vec<Line>,
+}
+
+impl Tracked {
+    /// How an order stands; `None` where it was not followed.
+    pub fn line_of(&self, order: u32) -> Option<&Line> {
+        self.orders.iter().position(|followed| *followed == order).map(|i| &self.lines[i])
+    }
 }
 
 /// How one harmonic stands in the cells.
@@ -207,7 +224,8 @@ pub(super) fn track(cells: &Cells, clear: &[u32], reach_hz: f64, duration_s: f64
     let (phases, wander, smoothed) = found?;
     let advance = phases.advance(wander, duration_s);
     let lines = (0..cells.orders.len()).map(|i| standing(cells, i, &smoothed.phase_rad)).collect();
-    Some(Tracked { smoothed, phases, wander, advance, lines })
+    let orders = cells.orders.clone();
+    Some(Tracked { smoothed, phases, wander, advance, orders, lines })
 }
 
 /// The quickest wander that can be told from noise: over the smoother's time constant, the
@@ -376,7 +394,8 @@ struct SearchLine {
 impl SearchLine {
     fn new(cells: &Cells, line: usize) -> Self {
         let values = &cells.values[line];
-        let most = LARGEST * median(&mut values.iter().map(|z| z.norm()).filter(|size| *size > 0.0).collect::<Vec<_>>());
+        let most = LARGEST
+            * median(&mut values.iter().map(|z| z.norm()).filter(|size| *size > 0.0).collect::<Vec<_>>());
         let values: Vec<Complex64> =
             values.iter().map(|z| z * (most / z.norm().max(1e-30)).min(1.0)).collect();
         // Where limiting took noise away, the noise is what differs from cell to cell.
@@ -388,8 +407,27 @@ impl SearchLine {
 
     /// Σ z e^(−j2πk·offset·t) over the cells of a window, by Horner's rule.
     fn sum_at(&self, bounds: (usize, usize), offset_hz: f64, cell_s: f64) -> Complex64 {
-        let step = Complex64::cis(-TAU * self.order * offset_hz * cell_s);
-        self.values[bounds.0..bounds.1].iter().rev().fold(Complex64::ZERO, |sum, z| sum * step + z)
+        self.sums_at(bounds, [offset_hz; TOGETHER], cell_s)[0]
+    }
+
+    /// [`Self::sum_at`] at several offsets side by side: each product of one waits for its last.
+    fn sums_at(
+        &self,
+        bounds: (usize, usize),
+        offsets_hz: [f64; TOGETHER],
+        cell_s: f64,
+    ) -> [Complex64; TOGETHER] {
+        let steps = offsets_hz.map(|offset_hz| Complex64::cis(-TAU * self.order * offset_hz * cell_s));
+        let (step_re, step_im) = (steps.map(|step| step.re), steps.map(|step| step.im));
+        let (mut re, mut im) = ([0.0; TOGETHER], [0.0; TOGETHER]);
+        for z in self.values[bounds.0..bounds.1].iter().rev() {
+            for i in 0..TOGETHER {
+                let turned = re[i] * step_re[i] - im[i] * step_im[i];
+                im[i] = re[i] * step_im[i] + im[i] * step_re[i] + z.im;
+                re[i] = turned + z.re;
+            }
+        }
+        std::array::from_fn(|i| Complex64::new(re[i], im[i]))
     }
 }
 
@@ -461,7 +499,7 @@ impl<'a> Search<'a> {
         let top = self.lines.iter().map(|line| line.order).fold(1.0, f64::max);
         let reach_hz = reach_hz.min(0.45 / (self.cells.length_s * top));
         let parts = self.cells.count().div_ceil(self.window);
-        self.fits = (0..parts).map(|w| self.fit(self.bounds(w), reach_hz, top)).collect();
+        self.fits = (0..parts).into_par_iter().map(|w| self.fit(self.bounds(w), reach_hz, top)).collect();
     }
 
     fn fit(&self, bounds: (usize, usize), reach_hz: f64, top: f64) -> Fit {
@@ -469,14 +507,16 @@ impl<'a> Search<'a> {
         let length_s = cells as f64 * self.cells.length_s;
         let steps = (6.0 * length_s * top * reach_hz).ceil().max(1.0) as i32;
         let step_hz = reach_hz / f64::from(steps);
-        let likelihood = |offset_hz: f64| -> f64 {
-            let power = |line: &SearchLine| {
-                let sum = line.sum_at(bounds, offset_hz, self.cells.length_s);
-                sum.norm_sqr() / (2.0 * line.variance * cells as f64)
-            };
-            self.lines.iter().map(power).sum()
-        };
-        let grid: Vec<f64> = (-steps..=steps).map(|i| likelihood(f64::from(i) * step_hz)).collect();
+        let offset_hz = |i: usize| (i as f64 - f64::from(steps)) * step_hz;
+        let mut grid = vec![0.0; 2 * steps as usize + 1];
+        for (n, places) in grid.chunks_mut(TOGETHER).enumerate() {
+            let offsets_hz = std::array::from_fn(|i| offset_hz(n * TOGETHER + i));
+            for line in &self.lines {
+                let sums = line.sums_at(bounds, offsets_hz, self.cells.length_s);
+                let scale = 1.0 / (2.0 * line.variance * cells as f64);
+                places.iter_mut().zip(sums).for_each(|(place, sum)| *place += scale * sum.norm_sqr());
+            }
+        }
         let best = (0..grid.len()).max_by(|&a, &b| grid[a].total_cmp(&grid[b])).unwrap_or(0);
         // A parabola through the peak and its neighbours.
         let shift = if best > 0 && best + 1 < grid.len() {

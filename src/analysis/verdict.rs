@@ -21,6 +21,8 @@ const SELDOM: f64 = 0.4;
 /// Width in hertz in which public supplies are expected, and as much again: half of all that
 /// hums is there.
 const EXPECTED_HZ: f64 = 4.4;
+/// A faint line at the end of the usual range may be read so far beyond it.
+const MISREAD: f64 = 1.02;
 /// Most that one order adds.
 const MOST_FROM_ONE: f64 = 40.0;
 /// Evidence at which the find is as likely chance as not.
@@ -106,8 +108,8 @@ impl Verdict {
         motion: &Motion,
         company: Company,
     ) -> Self {
-        let expected =
-            nearest_supply(frequency_hz).is_some_and(|s| s.is_public() && s.is_usual(frequency_hz));
+        let expected = nearest_supply(frequency_hz)
+            .is_some_and(|s| s.is_public() && s.stray(frequency_hz) <= MISREAD * s.usual);
         let heard: Vec<Heard> = heard_all_the_time(fine, tracked, expected);
         let alone = heard.iter().filter(|line| line.stands_alone());
         let lasting: Vec<(u32, f64)> = alone.map(|line| (line.order, line.says())).collect();
@@ -126,7 +128,7 @@ impl Verdict {
             is_played(fine, tracked, &heard, company)
         };
         let hasty = motion.hz_per_s > HASTY * frequency_hz.min(100.0);
-        let plausible = could_be_all(&orders, frequency_hz) && !alone_far && !hasty && !played;
+        let plausible = are_a_supplys(&orders, frequency_hz) && !alone_far && !hasty && !played;
         let ambiguous = if plausible { other_fit(&orders, frequency_hz) } else { None };
         let chance = 1.0 / (1.0 + (-(evidence - EVEN) / 3.0).exp());
         let confidence =
@@ -156,7 +158,8 @@ impl Verdict {
             && stay_s >= least_s
             && is_usual(frequency_hz)
             && 2 * shaken <= heard.len()
-            && !(goes && swell(fine, tracked, &verdict.lasting).is_none_or(|swell| swell > MOST_SWELL_OF_A_STAY))
+            && !(goes
+                && swell(fine, tracked, &verdict.lasting).is_none_or(|swell| swell > MOST_SWELL_OF_A_STAY))
             && motion.hz_per_s <= GRID_HASTE * frequency_hz;
         if clear { verdict } else { Self { found: false, confidence: 0.1 * verdict.confidence, ..verdict } }
     }
@@ -192,7 +195,8 @@ impl Heard {
 /// Where no public supply is `expected`, even noise is no reason to claim one.
 fn heard_all_the_time(fine: &Cells, tracked: &Tracked, expected: bool) -> Vec<Heard> {
     let all = tracked.lines.iter().zip(standings(fine, tracked)).enumerate();
-    let there = all.filter(|(_, (line, _))| line.steadiness >= STEADY && line.throughout && line.presence >= SELDOM);
+    let there =
+        all.filter(|(_, (line, _))| line.steadiness >= STEADY && line.throughout && line.presence >= SELDOM);
     there
         .map(|(i, (line, beside))| Heard {
             order: fine.orders[i],
@@ -245,7 +249,7 @@ fn below_ceiling(score: f64, frequency_hz: f64, ambiguous: bool) -> f64 {
 /// (rectifiers), or third and fifth; or multiples of the third or the sixth alone
 /// (three-phase loads); in its usual range the third and any other will do. Anything
 /// else is a comb of somebody's notes and their tempo.
-pub(super) fn could_be_all(orders: &[u32], frequency_hz: f64) -> bool {
+fn are_a_supplys(orders: &[u32], frequency_hz: f64) -> bool {
     let Some(supply) = nearest_supply(frequency_hz) else { return false };
     let has = |order: u32| orders.contains(&order);
     let usual = supply.is_usual(frequency_hz);

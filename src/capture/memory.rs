@@ -48,4 +48,18 @@ impl Capture for MemoryCapture {
         self.position = end;
         Ok(read)
     }
+
+    fn read_channel(
+        &mut self,
+        channel: usize,
+        plane: &mut Vec<f64>,
+        frames: usize,
+    ) -> Result<usize, CaptureError> {
+        let end = (self.position + frames).min(self.format.frames as usize);
+        plane.clear();
+        plane.extend_from_slice(&self.planes[channel][self.position..end]);
+        let read = end - self.position;
+        self.position = end;
+        Ok(read)
+    }
 }

@@ -41,7 +41,7 @@ impl Format {
 /// A recording that can be read in blocks, and read again from its start.
 ///
 /// Samples are fractions of full scale: ±1.0 is the converter's limit.
-pub trait Capture {
+pub trait Capture: Send {
     /// Rate, channels and length.
     fn format(&self) -> &Format;
 
@@ -66,4 +66,21 @@ pub trait Capture {
     /// # Errors
     /// [`CaptureError`] when the file cannot be read or a sample is not a number.
     fn read_block(&mut self, planes: &mut [Vec<f64>], frames: usize) -> Result<usize, CaptureError>;
+
+    /// Reads one channel (0 first) of the next block: `plane` is cleared and filled with
+    /// up to `frames` samples. Returns how many were read, 0 at the end.
+    ///
+    /// # Errors
+    /// [`CaptureError`] when the file cannot be read or a sample of the channel is not a number.
+    fn read_channel(
+        &mut self,
+        channel: usize,
+        plane: &mut Vec<f64>,
+        frames: usize,
+    ) -> Result<usize, CaptureError> {
+        let mut planes = vec![Vec::new(); self.format().channels];
+        let read = self.read_block(&mut planes, frames)?;
+        std::mem::swap(plane, &mut planes[channel]);
+        Ok(read)
+    }
 }

@@ -41,46 +41,45 @@ impl SampleFormat {
         if self.is_float() { 0.0 } else { (1.0 - f64::from(self.bits())).exp2() }
     }
 
-    /// Interleaved bytes (whole frames) to one plane a channel.
+    /// Interleaved bytes (whole frames of `channels`) to one channel, 0 first.
     ///
     /// Integer code / 2^(bits − 1), so that the lowest code is −1 exactly.
-    pub(super) fn decode(self, raw: &[u8], planes: &mut [Vec<f64>]) {
+    pub(super) fn decode(self, raw: &[u8], channels: usize, channel: usize, plane: &mut Vec<f64>) {
         match self {
-            Self::U8 => spread(raw, planes, |[byte]: [u8; 1]| (f64::from(byte) - 128.0) / 128.0),
-            Self::I16 => spread(raw, planes, |bytes| f64::from(i16::from_le_bytes(bytes)) / 32_768.0),
-            Self::I24 => spread(raw, planes, |[low, middle, high]: [u8; 3]| {
+            Self::U8 => {
+                pick(raw, channels, channel, plane, |[byte]: [u8; 1]| (f64::from(byte) - 128.0) / 128.0);
+            }
+            Self::I16 => {
+                pick(raw, channels, channel, plane, |bytes| f64::from(i16::from_le_bytes(bytes)) / 32_768.0);
+            }
+            Self::I24 => pick(raw, channels, channel, plane, |[low, middle, high]: [u8; 3]| {
                 // In the upper three bytes of an i32 the sign takes care of itself.
                 f64::from(i32::from_le_bytes([0, low, middle, high])) / 2_147_483_648.0
             }),
-            Self::I32 => spread(raw, planes, |bytes| f64::from(i32::from_le_bytes(bytes)) / 2_147_483_648.0),
-            Self::F32 => spread(raw, planes, |bytes| f64::from(f32::from_le_bytes(bytes))),
+            Self::I32 => pick(raw, channels, channel, plane, |bytes| {
+                f64::from(i32::from_le_bytes(bytes)) / 2_147_483_648.0
+            }),
+            Self::F32 => pick(raw, channels, channel, plane, |bytes| f64::from(f32::from_le_bytes(bytes))),
         }
     }
 }
 
-/// De-interleaves samples of `W` bytes. One and two channels, which are nearly
+/// Every `channels`-th sample of `W` bytes. One and two channels, which are nearly
 /// all recordings, have loops of their own with strides the compiler knows.
-fn spread<const W: usize>(raw: &[u8], planes: &mut [Vec<f64>], value: impl Fn([u8; W]) -> f64 + Copy) {
+fn pick<const W: usize>(
+    raw: &[u8],
+    channels: usize,
+    channel: usize,
+    plane: &mut Vec<f64>,
+    value: impl Fn([u8; W]) -> f64 + Copy,
+) {
     let samples = raw.as_chunks::<W>().0;
-    let channels = planes.len();
-    match planes {
-        [only] => {
-            only.clear();
-            only.extend(samples.iter().map(|&bytes| value(bytes)));
-        }
-        [left, right] => {
-            let pairs = samples.as_chunks::<2>().0;
-            left.clear();
-            left.extend(pairs.iter().map(|&[first, _]| value(first)));
-            right.clear();
-            right.extend(pairs.iter().map(|&[_, second]| value(second)));
-        }
-        _ => {
-            for (channel, plane) in planes.iter_mut().enumerate() {
-                plane.clear();
-                plane.extend(samples.chunks_exact(channels).map(|frame| value(frame[channel])));
-            }
-        }
+    plane.clear();
+    match (channels, channel) {
+        (1, _) => plane.extend(samples.iter().map(|&bytes| value(bytes))),
+        (2, 0) => plane.extend(samples.as_chunks::<2>().0.iter().map(|&[first, _]| value(first))),
+        (2, _) => plane.extend(samples.as_chunks::<2>().0.iter().map(|&[_, second]| value(second))),
+        _ => plane.extend(samples.chunks_exact(channels).map(|frame| value(frame[channel]))),
     }
 }
 
@@ -89,9 +88,9 @@ mod tests {
     use super::*;
 
     fn one(format: SampleFormat, raw: &[u8]) -> Vec<f64> {
-        let mut planes = vec![Vec::new()];
-        format.decode(raw, &mut planes);
-        planes.remove(0)
+        let mut plane = Vec::new();
+        format.decode(raw, 1, 0, &mut plane);
+        plane
     }
 
     #[test]
@@ -107,11 +106,11 @@ mod tests {
     fn channels_are_told_apart_whatever_their_number() {
         for channels in 1..=5_usize {
             let raw: Vec<u8> = (0..channels * 7).flat_map(|n| (n as i16).to_le_bytes()).collect();
-            let mut planes = vec![Vec::new(); channels];
-            SampleFormat::I16.decode(&raw, &mut planes);
-            for (channel, plane) in planes.iter().enumerate() {
+            for channel in 0..channels {
+                let mut plane = Vec::new();
+                SampleFormat::I16.decode(&raw, channels, channel, &mut plane);
                 let expected: Vec<f64> = (0..7).map(|f| (f * channels + channel) as f64 / 32_768.0).collect();
-                assert_eq!(*plane, expected);
+                assert_eq!(plane, expected);
             }
         }
     }

@@ -110,17 +110,39 @@ impl WavCapture {
         self.format.channels * self.sample_format.bytes()
     }
 
-    /// The first sample of the block just read that is not a number, as an error.
-    fn refuse_not_finite(&self, planes: &[Vec<f64>]) -> Result<(), CaptureError> {
+    /// Fills `raw` with the next block; returns its frames.
+    fn read_raw(&mut self, frames: usize) -> Result<usize, CaptureError> {
+        let left = self.format.frames - self.position;
+        let frames = usize::try_from(left).map_or(frames, |left| frames.min(left));
+        self.raw.resize(frames * self.frame_bytes(), 0);
+        let read = self.file.read_exact(&mut self.raw);
+        read.map_err(|source| CaptureError::Io { path: self.path.clone(), source })?;
+        Ok(frames)
+    }
+
+    /// One channel of the block just read.
+    fn decode(&self, channel: usize, plane: &mut Vec<f64>) {
+        self.sample_format.decode(&self.raw, self.format.channels, channel, plane);
+    }
+
+    /// The first sample of the block just read that is not a number, as an error. Planes
+    /// come with the channel that each holds.
+    fn refuse_not_finite(&self, planes: &[(usize, &Vec<f64>)]) -> Result<(), CaptureError> {
+        if !self.sample_format.is_float() {
+            return Ok(());
+        }
         // No way out of the loop before its end, so that it runs several samples at a time.
-        if planes.iter().flatten().fold(true, |all, sample| all & sample.is_finite()) {
+        let samples = planes.iter().flat_map(|(_, plane)| plane.iter());
+        if samples.fold(true, |all, sample| all & sample.is_finite()) {
             return Ok(());
         }
         let bad = |plane: &Vec<f64>| plane.iter().position(|sample| !sample.is_finite());
-        let first =
-            planes.iter().enumerate().filter_map(|(channel, plane)| Some((bad(plane)?, channel))).min();
-        let Some((frame, channel)) = first else { return Ok(()) };
-        let found = planes[channel][frame] as f32;
+        let first = planes.iter().filter_map(|(channel, plane)| {
+            let frame = bad(plane)?;
+            Some((frame, *channel, plane[frame] as f32))
+        });
+        let first = first.min_by_key(|(frame, channel, _)| (*frame, *channel));
+        let Some((frame, channel, found)) = first else { return Ok(()) };
         let frame = self.position + frame as u64;
         let at_byte =
             self.data_at + frame * self.frame_bytes() as u64 + (channel * self.sample_format.bytes()) as u64;
@@ -151,15 +173,24 @@ impl Capture for WavCapture {
 
     fn read_block(&mut self, planes: &mut [Vec<f64>], frames: usize) -> Result<usize, CaptureError> {
         debug_assert_eq!(planes.len(), self.format.channels, "one plane a channel");
-        let left = self.format.frames - self.position;
-        let frames = usize::try_from(left).map_or(frames, |left| frames.min(left));
-        self.raw.resize(frames * self.frame_bytes(), 0);
-        let read = self.file.read_exact(&mut self.raw);
-        read.map_err(|source| CaptureError::Io { path: self.path.clone(), source })?;
-        self.sample_format.decode(&self.raw, planes);
-        if self.sample_format.is_float() {
-            self.refuse_not_finite(planes)?;
+        let frames = self.read_raw(frames)?;
+        for (channel, plane) in planes.iter_mut().enumerate() {
+            self.decode(channel, plane);
         }
+        self.refuse_not_finite(&planes.iter().enumerate().collect::<Vec<_>>())?;
+        self.position += frames as u64;
+        Ok(frames)
+    }
+
+    fn read_channel(
+        &mut self,
+        channel: usize,
+        plane: &mut Vec<f64>,
+        frames: usize,
+    ) -> Result<usize, CaptureError> {
+        let frames = self.read_raw(frames)?;
+        self.decode(channel, plane);
+        self.refuse_not_finite(&[(channel, plane)])?;
         self.position += frames as u64;
         Ok(frames)
     }
