@@ -131,6 +131,7 @@ pub(super) fn second_pass(
         with_gaps(survey, &gathered, verdict, &reference, (found_hz, rate_hz, duration_s))
     });
     let (stays, judged) = gaps.unzip();
+    let stays = stays.flatten();
     let cells = gathered.cells;
     Ok(Second { reference, spectrum, tracked, verdict: judged.or(verdict), cells, stays })
 }

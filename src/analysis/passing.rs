@@ -60,23 +60,25 @@ pub(super) fn with_gaps(
     found: &Verdict,
     reference: &PhaseTrack,
     (frequency_hz, rate_hz, duration_s): (f64, f64, f64),
-) -> Option<(Stays, Verdict)> {
+) -> Option<(Option<Stays>, Verdict)> {
     let passing =
         passing(survey).filter(|passing| (passing.frequency_hz / frequency_hz - 1.0).abs() < SAME)?;
     // Louder programme may stand clear on another order: what was found tells where it is.
     let stays = with_sharp_ends(&passing.stays, &gathered.fine, &found.lasting, REACH_S);
     let share = stays.share(duration_s);
-    if stays.all.is_empty() || share >= ALL_THE_TIME {
+    if stays.all.is_empty() || share >= ALL_THE_TIME || !reference.is_constant() {
         return None;
-    }
-    if share >= MOST_OF_THE_TIME || !reference.is_constant() {
-        return Some((stays, found.clone()));
     }
     let reach_hz = REACH * frequency_hz;
     let judged =
         followed(gathered, &passing.stays, &passing.orders, reach_hz, reference, (rate_hz, duration_s))?;
-    let verdict = if judged.verdict.found { found.clone() } else { judged.verdict };
-    Some((stays, verdict))
+    if judged.verdict.found {
+        return Some((Some(stays), found.clone()));
+    }
+    // Programme that stands clear for a moment tells nothing of the hum; a comb that stands clear
+    // where it is, goes, and fades or shakes like a note, does.
+    let is_a_notes = share < MOST_OF_THE_TIME && judged.verdict.stands_clear();
+    is_a_notes.then_some((None, judged.verdict))
 }
 
 /// When it is there, and how loud then.

@@ -139,6 +139,11 @@ impl Verdict {
 }
 
 impl Verdict {
+    /// Whether the evidence would do for a stretch that was picked for it.
+    pub fn stands_clear(&self) -> bool {
+        self.evidence >= CLEAR_STAY
+    }
+
     /// On hum that comes and goes, from a stretch in which it stands clear. That stretch was
     /// picked for it, so more is asked: a comb of two orders or a long stay, a frequency as
     /// steady as a grid's, no vibrato, and of what `goes` a level that does not fade.
@@ -154,7 +159,7 @@ impl Verdict {
         let heard = heard_all_the_time(fine, tracked, true);
         let shaken = heard.iter().filter(|line| line.beside.is_none_or(|beside| is_shaken(&beside))).count();
         let least_s = if verdict.lasting.len() >= 2 { LEAST_STAY_S } else { LEAST_STAY_OF_ONE_LINE_S };
-        let clear = verdict.evidence >= CLEAR_STAY
+        let clear = verdict.stands_clear()
             && stay_s >= least_s
             && is_usual(frequency_hz)
             && 2 * shaken <= heard.len()
