@@ -2,23 +2,11 @@
 
 mod analysis_signals;
 
-use analysis_signals::{Noise, add_note, assert_finite, hum, music, power, run, speech};
-use notchwright::analysis::{AnalyseOptions, AnalysisError, PhaseTrack, analyse};
+use analysis_signals::{Noise, add_note, assert_finite, hum, run, steady, with_noise};
+use notchwright::analysis::{AnalyseOptions, AnalysisError, analyse};
 use notchwright::capture::MemoryCapture;
-use std::f64::consts::TAU;
 
 const RATE: u32 = 4000;
-
-fn with_noise(mut samples: Vec<f64>, sigma: f64, seed: u64) -> Vec<f64> {
-    let mut noise = Noise::new(seed);
-    samples.iter_mut().for_each(|x| *x += sigma * noise.normal());
-    samples
-}
-
-fn steady(frequency_hz: f64, lines: &[(u32, f64)], rate: u32, duration_s: f64) -> Vec<f64> {
-    let phases: Vec<f64> = lines.iter().map(|(k, _)| f64::from(*k)).collect();
-    hum(&PhaseTrack::constant(frequency_hz, duration_s), lines, &phases, rate, duration_s)
-}
 
 #[test]
 fn a_missing_fundamental_is_still_counted_from_it() {
@@ -39,113 +27,6 @@ fn multiples_of_300_hz_alone_are_called_ambiguous() {
 }
 
 #[test]
-fn bass_and_tuning_notes_are_no_hum() {
-    for (note_hz, seed) in [(48.999, 3), (440.0, 4)] {
-        let mut samples = vec![0.0; 20 * RATE as usize];
-        for i in 0..20 {
-            add_note(&mut samples, RATE, f64::from(i), 0.45, note_hz, 0.3);
-        }
-        let mains = run(RATE, vec![with_noise(samples, 1e-3, seed)]).analysis.mains;
-        assert!(!mains.found, "{note_hz} Hz: {mains:?}");
-    }
-}
-
-#[test]
-#[ignore = "not met: at seed 3 the third harmonic alone stands clear of the notes, which is not enough to claim"]
-fn hum_30_db_under_music_is_found() {
-    for seed in 0..6 {
-        let duration_s = 30.0;
-        let frequency_hz = if seed % 2 == 0 { 50.02 } else { 59.97 };
-        let programme = music(RATE, duration_s, 40 + seed);
-        let line = steady(frequency_hz, &[(1, 1.0), (2, 0.4), (3, 0.6), (5, 0.3)], RATE, duration_s);
-        let gain = (power(&programme) / power(&line) / 1000.0).sqrt();
-        let samples = programme.iter().zip(&line).map(|(m, h)| m + gain * h).collect();
-        let mains = run(RATE, vec![with_noise(samples, 1e-4, seed)]).analysis.mains;
-        let found_hz = mains.frequency_hz.unwrap_or_else(|| panic!("seed {seed}: {mains:?}"));
-        assert!((found_hz - frequency_hz).abs() < 2e-3, "seed {seed}: {found_hz} for {frequency_hz}");
-    }
-}
-
-#[test]
-fn hum_free_clips_give_no_find() {
-    let duration_s = 12.0;
-    for seed in 0..60 {
-        let count = (duration_s * f64::from(RATE)) as usize;
-        let clip = match seed % 4 {
-            0 => with_noise(music(RATE, duration_s, seed), 1e-4, seed),
-            1 => with_noise(speech(RATE, duration_s, seed), 1e-4, seed),
-            2 => with_noise(vec![0.0; count], 0.05, seed),
-            _ => {
-                let mut noise = Noise::new(seed);
-                let (from, to) = (noise.between(30.0, 300.0), noise.between(30.0, 300.0));
-                let drifting = (0..count).map(|n| {
-                    let t = n as f64 / f64::from(RATE);
-                    0.1 * (TAU * (from * t + 0.5 * (to - from) / duration_s * t * t)).sin()
-                });
-                with_noise(drifting.collect(), 1e-3, seed)
-            }
-        };
-        let analysis = run(RATE, vec![clip]).analysis;
-        assert!(!analysis.mains.found, "seed {seed}: {:?} {:?}", analysis.mains, analysis.harmonics);
-    }
-}
-
-/// A sustained note: harmonics with vibrato, swelling by up to 6 dB.
-fn drone(note_hz: f64, seed: u64, duration_s: f64) -> Vec<f64> {
-    let mut noise = Noise::new(seed);
-    let (depth, vibrato_hz) = (noise.between(0.001, 0.006), noise.between(4.0, 6.0));
-    let swell_hz = noise.between(0.1, 0.3);
-    let count = (duration_s * f64::from(RATE)) as usize;
-    let mut phase = 0.0;
-    let note = (0..count).map(|n| {
-        let t = n as f64 / f64::from(RATE);
-        phase += TAU * note_hz * (1.0 + depth * (TAU * vibrato_hz * t).sin()) / f64::from(RATE);
-        let swell = 0.5 + 0.5 * (TAU * swell_hz * t).sin().powi(2);
-        0.1 * swell * (1..=8).map(|k| (f64::from(k) * phase).sin() / f64::from(k)).sum::<f64>()
-    });
-    with_noise(note.collect(), 1e-3, seed + 1000)
-}
-
-#[test]
-fn sustained_notes_with_vibrato_are_no_hum() {
-    // They, their halves or their thirds lie in an island's range.
-    for (i, note_hz) in [48.999, 51.913, 61.735, 97.999, 103.826, 110.0, 123.471, 146.832, 155.563, 185.0]
-        .into_iter()
-        .enumerate()
-    {
-        let mains = run(RATE, vec![drone(note_hz, 900 + i as u64, 15.0)]).analysis.mains;
-        assert!(!mains.found, "{note_hz:.2} Hz: {mains:?}");
-    }
-}
-
-#[test]
-#[ignore = "not met: a seventh of F4 lies at 49.89 Hz, and 87.31 Hz is taken for a supply there"]
-fn sustained_notes_of_four_octaves_are_no_hum() {
-    for step in 0..40u32 {
-        let note_hz = 440.0 * 2f64.powf((f64::from(step) - 44.0) / 12.0);
-        let mains = run(RATE, vec![drone(note_hz, 900 + u64::from(step), 15.0)]).analysis.mains;
-        assert!(!mains.found, "{note_hz:.2} Hz: {mains:?}");
-    }
-}
-
-#[test]
-fn a_pattern_of_notes_repeated_exactly_is_no_hum() {
-    for seed in 0..12 {
-        let mut noise = Noise::new(1100 + seed);
-        let step_s = noise.between(0.1, 0.3);
-        let pitches: Vec<f64> =
-            (0..4).map(|_| 32.703 * 2f64.powf((noise.uniform() * 24.0).floor() / 12.0)).collect();
-        let mut samples = vec![0.0; 15 * RATE as usize];
-        let steps = (14.5 / step_s) as usize;
-        for i in 0..steps {
-            add_note(&mut samples, RATE, i as f64 * step_s, step_s, pitches[i % 4], 0.1);
-        }
-        let mains = run(RATE, vec![with_noise(samples, 1e-3, seed)]).analysis.mains;
-        assert!(!mains.found, "seed {seed}, {step_s} s, {pitches:?}: {mains:?}");
-    }
-}
-
-#[test]
 fn a_steady_island_is_claimed_with_less_confidence_and_a_note() {
     let lines = [(1, 0.05), (3, 0.02), (5, 0.01)];
     let island = run(RATE, vec![with_noise(steady(51.9, &lines, RATE, 20.0), 2e-3, 70)]).analysis;
@@ -159,14 +40,6 @@ fn a_steady_island_is_claimed_with_less_confidence_and_a_note() {
     let grid = run(RATE, vec![with_noise(steady(50.1, &lines, RATE, 20.0), 2e-3, 71)]).analysis;
     assert!(grid.mains.confidence > 0.95, "{:?}", grid.mains);
     assert!(!grid.notes.iter().any(|note| note.contains("island or a generator")), "{:?}", grid.notes);
-}
-
-#[test]
-fn multiples_of_a_note_are_counted_from_no_island() {
-    // A2 and its multiples, as steady as a machine: 55 Hz is no reason to call it a rectifier's.
-    let note = steady(110.0, &[(1, 0.05), (2, 0.03), (3, 0.02)], RATE, 20.0);
-    let mains = run(RATE, vec![with_noise(note, 2e-3, 72)]).analysis.mains;
-    assert!(!mains.found, "{mains:?}");
 }
 
 #[test]
@@ -193,27 +66,6 @@ fn a_rate_that_hides_a_supply_says_so_whatever_is_found() {
 }
 
 #[test]
-fn weak_lines_are_found_with_their_orders() {
-    // 10 dB over the noise in a 10 s spectrum over 60 s; 16 dB over 10 s.
-    let rate = 1000;
-    for (duration_s, over_db) in [(60.0, 10.0), (10.0, 16.0)] {
-        let density = 0.5 / 10f64.powf(over_db / 10.0) * 10.0;
-        let sigma = (density * f64::from(rate) / 2.0).sqrt() * 0.01;
-        let mut right = 0;
-        for seed in 0..20 {
-            let mut noise = Noise::new(700 + seed);
-            let frequency_hz = noise.between(49.8, 50.2);
-            let lines = [(1, 0.01), (3, 0.007), (5, 0.004)];
-            let samples = with_noise(steady(frequency_hz, &lines, rate, duration_s), sigma, 800 + seed);
-            let analysis = run(rate, vec![samples]).analysis;
-            let near = analysis.mains.frequency_hz.is_some_and(|f| (f - frequency_hz).abs() < 0.01);
-            right += u32::from(near && analysis.harmonics.iter().any(|h| h.order == 1));
-        }
-        assert!(right >= 19, "{right} of 20 at {over_db} dB in {duration_s} s");
-    }
-}
-
-#[test]
 fn low_sample_rates_say_what_folds() {
     for rate in [128, 150, 200] {
         let samples = with_noise(steady(50.02, &[(1, 0.05)], rate, 60.0), 0.005, 5);
@@ -225,14 +77,9 @@ fn low_sample_rates_say_what_folds() {
     }
     let samples = with_noise(steady(49.9, &[(1, 0.05)], 100, 60.0), 0.002, 6);
     let analysis = run(100, vec![samples]).analysis;
-    if analysis.mains.found {
-        assert!(
-            analysis.notes.iter().any(|note| note.contains("cannot be told apart")),
-            "{:?}",
-            analysis.notes
-        );
-        assert!(analysis.mains.frequency_se_hz.is_some_and(|se| se >= 0.01));
-    }
+    assert!(analysis.notes.iter().any(|note| note.contains("50 Hz is half the sample rate")), "{analysis:?}");
+    let sure = analysis.mains.frequency_se_hz.is_some_and(|se| se < 0.01);
+    assert!(!sure, "49.9 and 50.1 Hz cannot be told apart: {:?}", analysis.mains);
 }
 
 #[test]
@@ -253,6 +100,49 @@ fn clipped_samples_are_counted_and_said() {
     let share = analysis.captures[0].clipped_samples as f64 / (5.0 * f64::from(RATE));
     assert!((share - 2.0 / 3.0).abs() < 0.02, "{share}");
     assert!(analysis.notes.iter().any(|note| note.contains("clipped")));
+}
+
+#[test]
+fn clipped_hum_is_found_at_its_frequency() {
+    let samples: Vec<f64> =
+        steady(50.02, &[(1, 1.6), (3, 0.2)], RATE, 15.0).iter().map(|x| x.clamp(-1.0, 1.0)).collect();
+    let analysis = run(RATE, vec![samples]).analysis;
+    assert!((analysis.mains.frequency_hz.expect("found") - 50.02).abs() < 1e-4, "{:?}", analysis.mains);
+    assert!(analysis.captures[0].clipped_samples > 0);
+}
+
+/// Hum through a radio link that loses a tenth of a second to a half, again and again.
+fn with_dropouts(seed: u64) -> notchwright::analysis::Analysis {
+    let mut noise = Noise::new(90 + seed);
+    let mut samples = with_noise(steady(50.02, &[(1, 0.1), (3, 0.03)], RATE, 20.0), 1e-3, seed);
+    let mut at_s = noise.between(0.2, 2.0);
+    while at_s < 19.0 {
+        let length_s = noise.between(0.1, 0.5);
+        samples[(at_s * 4000.0) as usize..((at_s + length_s) * 4000.0) as usize].fill(0.0);
+        at_s += length_s + noise.between(1.0, 3.0);
+    }
+    run(RATE, vec![samples]).analysis
+}
+
+#[test]
+fn dropouts_hide_no_hum() {
+    for seed in 0..4 {
+        let analysis = with_dropouts(seed);
+        let found_hz = analysis.mains.frequency_hz.unwrap_or_else(|| panic!("seed {seed}: {analysis:?}"));
+        assert!((found_hz - 50.02).abs() < 1e-3, "seed {seed}: {found_hz}");
+        for order in [1, 3] {
+            assert!(analysis.harmonics.iter().any(|line| line.order == order), "seed {seed}, order {order}");
+        }
+    }
+}
+
+#[test]
+#[ignore = "not met: at seed 2 the splatter of the gaps is listed as order 4"]
+fn dropouts_add_no_orders() {
+    for seed in 0..4 {
+        let orders: Vec<u32> = with_dropouts(seed).harmonics.iter().map(|line| line.order).collect();
+        assert_eq!(orders, [1, 3], "seed {seed}");
+    }
 }
 
 #[test]

@@ -26,6 +26,7 @@ fn findings(nominal_hz: f64, levels_dbfs: &[(u32, f64)]) -> Analysis {
             frequency_se_hz: Some(1e-4),
             spread_hz: Some(0.03),
             spread_floor_hz: Some(0.001),
+            share_of_time: None,
             confidence: 0.99,
         },
         harmonics: levels_dbfs

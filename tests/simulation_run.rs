@@ -112,6 +112,7 @@ fn analysis(capture: &dyn Capture, channel: usize, orders: &[u32]) -> Analysis {
             frequency_se_hz: None,
             spread_hz: None,
             spread_floor_hz: None,
+            share_of_time: None,
             confidence: 1.0,
         },
         harmonics: harmonics.collect(),

@@ -191,6 +191,7 @@ fn merged_mains(done: &[One], base: usize, notes: &mut Vec<String>) -> Mains {
         frequency_se_hz: Some(se_hz),
         spread_hz: spread.map(|spread| spread.spread_hz),
         spread_floor_hz: spread.map(|spread| spread.floor_hz),
+        share_of_time: hums[0].1.share_of_time,
         confidence: done[base].confidence,
     }
 }

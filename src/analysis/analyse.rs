@@ -10,9 +10,10 @@ use super::company::usual_beside;
 use super::findings::{Analysis, CaptureSummary, OtherSupply, TrackPoint};
 use super::folding::{hidden_supplies, is_half_rate};
 use super::level_track::LevelOverTime;
-use super::likeliest::likeliest;
+use super::likeliest::{comes_and_goes, likeliest};
 use super::orders::OrderLevel;
-use super::passes::{Followed, second_pass, survey, third_pass, tracked_apart};
+use super::passes::{Followed, Second, second_pass, survey, third_pass, tracked_apart};
+use super::passing::presence_note;
 use super::reading::read_channel;
 use super::reference::mean_frequency_hz;
 use super::spectrum::{Spectrum, SpectrumMeter};
@@ -96,6 +97,8 @@ pub(super) struct Hum {
     pub levels: Vec<OrderLevel>,
     pub listed: Vec<u32>,
     pub other_supplies: Vec<OtherSupply>,
+    /// Share of the time for which it is there, where it comes and goes.
+    pub share_of_time: Option<f64>,
 }
 
 fn analyse_one(
@@ -156,8 +159,23 @@ fn analyse_one(
             channel,
         ),
     };
-    let best = if duration_s >= SHORTEST_S { likeliest(&survey, found, rate_hz) } else { None };
-    let Some(best) = &best else {
+    let long_enough = duration_s >= SHORTEST_S;
+    let mut best = if long_enough { likeliest(&survey, found, rate_hz) } else { None };
+    let mut seen = match &best {
+        Some(best) => Some(second_pass(capture, channel, best, &survey, &mut |p| progress((1.0 + p) / 3.0))?),
+        None => None,
+    };
+    // What is not there all the time may be there at times.
+    if long_enough
+        && !seen.as_ref().is_some_and(Second::found)
+        && let Some(candidate) = comes_and_goes(&survey)
+    {
+        let again = second_pass(capture, channel, &candidate, &survey, &mut |p| progress((1.0 + p) / 3.0))?;
+        if again.found() || seen.is_none() {
+            (best, seen) = (Some(candidate), Some(again));
+        }
+    }
+    let (Some(best), Some(seen)) = (&best, seen) else {
         let mut spectrum = SpectrumMeter::new(rate_hz, duration_s);
         read_channel(capture, channel, &mut |samples| spectrum.push(samples), &mut |p| {
             progress((1.0 + 2.0 * p) / 3.0);
@@ -165,7 +183,6 @@ fn analyse_one(
         one.spectrum = spectrum.finish();
         return Ok(one);
     };
-    let seen = second_pass(capture, channel, best, &survey, &mut |p| progress((1.0 + p) / 3.0))?;
     one.spectrum = seen.spectrum;
     one.level = seen.level;
     one.confidence = seen.verdict.as_ref().map_or(0.0, |verdict| verdict.confidence);
@@ -197,6 +214,12 @@ fn analyse_one(
     let mut hum = third_pass(capture, channel, &followed, &verdict, &besides, &mut |p| {
         progress((2.0 + p) / 3.0);
     })?;
+    if is_a_notes(&hum.listed) {
+        // What made the find fades along the whole track.
+        one.confidence *= 0.1;
+        progress(1.0);
+        return Ok(one);
+    }
     if let Some(other_hz) = verdict.ambiguous {
         one.notes.push(format!(
             "ambiguous: the lines found fit a supply of {:.0} Hz and one of {other_hz:.0} Hz alike; orders are \
@@ -216,6 +239,10 @@ fn analyse_one(
         hum.se_hz = hum.se_hz.max((0.5 * rate_hz - hum.frequency_hz).abs()).max(1.0 / duration_s);
         hum.wander = None;
     }
+    if let Some(stays) = &seen.stays {
+        hum.share_of_time = Some(stays.share(duration_s));
+        one.notes.push(presence_note(stays, duration_s));
+    }
     one.hum = Some(hum);
     progress(1.0);
     Ok(one)
@@ -224,6 +251,12 @@ fn analyse_one(
 /// Bits of an integer sample.
 fn sample_bits(format: SampleFormat) -> Option<u16> {
     (format != SampleFormat::F32).then(|| format.bits())
+}
+
+/// Whether what is left in the account is one line above the third, or nothing but lines above
+/// the sixth: no supply shows those alone, and they are multiples of many notes.
+fn is_a_notes(listed: &[u32]) -> bool {
+    matches!(listed, [order] if *order > 3) || listed.iter().all(|order| *order > 6)
 }
 
 fn best_of(found: &[Candidate]) -> Option<&Candidate> {

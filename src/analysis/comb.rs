@@ -6,6 +6,7 @@
 //! above what noise shows, in standard deviations, capped so that no single
 //! strong line outweighs a comb.
 
+use super::stays::Stays;
 use super::supplies::{FAMILIES, Family, prior};
 use super::survey::{SURVEY_TOP_HZ, Surveyed};
 
@@ -29,6 +30,8 @@ pub(super) struct Candidate {
     pub power: f64,
     /// Orders that stand out, the clearest first.
     pub orders: Vec<u32>,
+    /// Where it is there, if not all the time.
+    pub stays: Option<Stays>,
 }
 
 impl Candidate {
@@ -107,7 +110,13 @@ impl<'a> View<'a> {
         let orders: Vec<u32> =
             self.orders(steady).filter(|&(_, line)| standing(line) > 0.0).map(|(k, _)| k).collect();
         let path_hz = vec![steady; self.survey.ratios.len()];
-        Some(Candidate { path_hz, score: self.steady_score(steady) * prior(steady), power: 0.0, orders })
+        Some(Candidate {
+            path_hz,
+            score: self.steady_score(steady) * prior(steady),
+            power: 0.0,
+            orders,
+            stays: None,
+        })
     }
 
     fn grid(&self, family: &Family) -> Vec<f64> {
@@ -166,7 +175,8 @@ impl<'a> View<'a> {
         }
         found.sort_by(|a, b| b.1.total_cmp(&a.1));
         score *= prior(path_hz.iter().sum::<f64>() / path_hz.len() as f64);
-        Candidate { path_hz, score, power, orders: found.into_iter().map(|(k, _)| k).collect() }
+        let orders = found.into_iter().map(|(k, _)| k).collect();
+        Candidate { path_hz, score, power, orders, stays: None }
     }
 
     /// The path of the best sum of clipped scores that moves little from

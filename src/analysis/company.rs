@@ -47,7 +47,8 @@ mod tests {
 
     #[test]
     fn only_another_public_supply_in_its_usual_range_is_company() {
-        let at = |hz: f64| Candidate { path_hz: vec![hz], score: 9.0, power: 0.0, orders: vec![1] };
+        let at =
+            |hz: f64| Candidate { path_hz: vec![hz], score: 9.0, power: 0.0, orders: vec![1], stays: None };
         let besides = [at(16.7), at(61.735), at(60.02), at(49.9)];
         let found: Vec<f64> = usual_beside(&besides, 50.0).map(Candidate::mean_hz).collect();
         assert_eq!(found, [60.02]);

@@ -8,6 +8,7 @@ use super::company::{are_shared, usual_beside};
 use super::gather::{Gather, Gathered};
 use super::passes::TOP_SHARE;
 use super::reference::{mean_frequency_hz, motion, reference_track};
+use super::stays::passing;
 use super::supplies::is_usual;
 use super::survey::{SURVEY_TOP_HZ, Surveyed};
 use super::tracker::track;
@@ -21,6 +22,8 @@ const WORTH_A_LOOK: f64 = 3.0;
 const CERTAIN: f64 = 25.0;
 /// A steady line's reference that is so far off is mended before the next look.
 const FAR_OFF_HZ: f64 = 0.05;
+/// Nats that being picked for its evidence may have given a comb.
+const PICKED: f64 = 4.0;
 
 /// The candidate whose lines, followed through the opening, say most.
 pub(super) fn likeliest(survey: &Surveyed, found: Vec<Candidate>, rate_hz: f64) -> Option<Candidate> {
@@ -37,6 +40,7 @@ pub(super) fn likeliest(survey: &Surveyed, found: Vec<Candidate>, rate_hz: f64) 
             score: 0.0,
             power: 0.0,
             orders: faint.orders,
+            stays: None,
         });
         tried.extend(followed(survey, faint.collect()));
     }
@@ -66,13 +70,27 @@ pub(super) fn likeliest(survey: &Surveyed, found: Vec<Candidate>, rate_hz: f64) 
     let stronger = |trial: &Trial| usual(trial) && trial.is_stronger_than(&tried[chosen]);
     let two = tried.get(chosen).is_some_and(usual);
     let chosen = if two { tried.iter().position(stronger).unwrap_or(chosen) } else { chosen };
-    // Of two accounts of one comb, the survey's own: the other was picked for its evidence.
+    // Of two accounts of one comb, the survey's own, unless it says less: the other was picked
+    // for its evidence.
     let surveyed = |trial: &Trial| {
         let apart = trial.frequency_hz / tried[chosen].frequency_hz - 1.0;
-        found(trial) && trial.candidate.score > 0.0 && apart.abs() < 0.005
+        let says_less = trial.verdict.evidence < tried[chosen].verdict.evidence - PICKED;
+        found(trial) && trial.candidate.score > 0.0 && apart.abs() < 0.005 && !says_less
     };
     let chosen = tried.iter().position(surveyed).unwrap_or(chosen);
     (chosen < tried.len()).then(|| tried.swap_remove(chosen).candidate)
+}
+
+/// The comb that stands clear for a part of the time, if there is one.
+pub(super) fn comes_and_goes(survey: &Surveyed) -> Option<Candidate> {
+    let passing = passing(survey).filter(|_| survey.rms > SILENT)?;
+    Some(Candidate {
+        path_hz: vec![passing.frequency_hz; survey.ratios.len()],
+        score: 0.0,
+        power: 0.0,
+        orders: passing.orders,
+        stays: Some(passing.stays),
+    })
 }
 
 fn followed(survey: &Surveyed, candidates: Vec<Candidate>) -> Vec<Trial> {

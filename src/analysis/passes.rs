@@ -9,11 +9,13 @@ use super::gather::{Gather, Gathered, kept_orders};
 use super::level_track::LevelOverTime;
 use super::likeliest::reach_hz;
 use super::orders::OrderMeter;
+use super::passing::{followed, with_gaps};
 use super::reading::{read_all, read_channel};
 use super::reference::{mean_frequency_hz, motion, reference_frequency_hz, reference_track, refined_track};
 use super::reread::levels_of;
 use super::spectrum::{Spectrum, SpectrumMeter};
 use super::spread::Wander;
+use super::stays::Stays;
 use super::supplies::nearest_supply;
 use super::survey::{ChannelSurvey, Surveyed};
 use super::tracker::{Cells, Tracked, track};
@@ -61,9 +63,17 @@ pub(super) struct Second {
     pub spectrum: Spectrum,
     pub tracked: Option<Tracked>,
     pub verdict: Option<Verdict>,
+    /// Where the hum is there, if it comes and goes.
+    pub stays: Option<Stays>,
     /// The cells that it was tracked in.
     pub cells: Cells,
     pub level: LevelOverTime,
+}
+
+impl Second {
+    pub fn found(&self) -> bool {
+        self.tracked.is_some() && self.verdict.as_ref().is_some_and(|verdict| verdict.found)
+    }
 }
 
 pub(super) fn second_pass(
@@ -89,6 +99,23 @@ pub(super) fn second_pass(
         progress,
     )?;
     let Gathered { cells, fine } = gather.finish();
+    let spectrum = spectrum.finish();
+    if let Some(stays) = &best.stays {
+        let gathered = Gathered { cells, fine };
+        let passing = followed(
+            &gathered,
+            stays,
+            &best.orders,
+            reach_hz(survey, best),
+            &reference,
+            (rate_hz, duration_s),
+        );
+        let stays = passing.as_ref().map(|passing| passing.stays.clone());
+        let (tracked, verdict) = passing.map(|passing| (passing.tracked, passing.verdict)).unzip();
+        let cells = gathered.cells;
+        let level = level_over_time(&cells, tracked.as_ref());
+        return Ok(Second { reference, spectrum, tracked, verdict, cells, stays, level });
+    }
     let tracked = track(&cells, &best.orders, reach_hz(survey, best), duration_s);
     let verdict = tracked.as_ref().map(|tracked| {
         let frequency_hz = mean_frequency_hz(&reference, tracked, duration_s);
@@ -101,10 +128,21 @@ pub(super) fn second_pass(
             Company::Alone,
         )
     });
-    let level = tracked
-        .as_ref()
-        .map_or_else(LevelOverTime::default, |tracked| LevelOverTime::measure(&cells, tracked));
-    Ok(Second { reference, spectrum: spectrum.finish(), tracked, verdict, cells, level })
+    let found = verdict.as_ref().zip(tracked.as_ref()).filter(|(verdict, _)| verdict.found);
+    let gathered = Gathered { cells, fine };
+    let gaps = found.and_then(|(verdict, tracked)| {
+        let found_hz = mean_frequency_hz(&reference, tracked, duration_s);
+        with_gaps(survey, &gathered, verdict, &reference, (found_hz, rate_hz, duration_s))
+    });
+    let (stays, judged) = gaps.unzip();
+    let stays = stays.flatten();
+    let cells = gathered.cells;
+    let level = level_over_time(&cells, tracked.as_ref());
+    Ok(Second { reference, spectrum, tracked, verdict: judged.or(verdict), cells, stays, level })
+}
+
+fn level_over_time(cells: &Cells, tracked: Option<&Tracked>) -> LevelOverTime {
+    tracked.map_or_else(LevelOverTime::default, |tracked| LevelOverTime::measure(cells, tracked))
 }
 
 /// The offset from a first reference by the orders that another supply does not have, in blocks
@@ -241,5 +279,6 @@ pub(super) fn third_pass(
         levels,
         listed,
         other_supplies: each_line_once(claims),
+        share_of_time: None,
     })
 }

@@ -11,6 +11,7 @@ use super::heavy_tail::{HeavyTail, median, typical_variance};
 use super::kalman::{Advance, Phases, Smoothed};
 use super::phasors::{BlockPhasors, block_response};
 use super::presence::{is_there_throughout, share_present};
+use super::stays::Stay;
 use num_complex::Complex64;
 use rayon::prelude::*;
 use std::f64::consts::{LN_2, TAU};
@@ -36,6 +37,8 @@ const GONE: f64 = 0.1;
 const FARTHEST_READ: f64 = 0.7;
 /// Variance of a phase that nothing is known of, in rad²: many turns.
 const UNKNOWN: f64 = 1e4;
+/// Nats of a line that are told from noise.
+const TOLD_NATS: f64 = 6.0;
 /// Phasors are limited in the search to so many times the typical one.
 const LARGEST: f64 = 2.5;
 
@@ -102,6 +105,30 @@ impl Cells {
         self.time_s.push(self.sum_time * share);
         self.share.push(self.gathered as f64 / self.blocks as f64);
         (self.gathered, self.sum_time) = (0, 0.0);
+    }
+
+    /// The cells of a stretch of time, which begins at 0.
+    pub fn during(&self, stay: &Stay) -> Self {
+        let inside = |t: f64| stay.from_s <= t - 0.5 * self.length_s && t + 0.5 * self.length_s <= stay.to_s;
+        let kept: Vec<usize> = (0..self.count()).filter(|&b| inside(self.time_s[b])).collect();
+        Self {
+            time_s: kept.iter().map(|&b| self.time_s[b] - stay.from_s).collect(),
+            values: self.values.iter().map(|line| kept.iter().map(|&b| line[b]).collect()).collect(),
+            share: kept.iter().map(|&b| self.share[b]).collect(),
+            ..self.clone()
+        }
+    }
+
+    /// All cells, empty outside some stretches of time: they say nothing there.
+    pub fn only_during(mut self, stays: &[Stay]) -> Self {
+        for b in 0..self.count() {
+            let t = self.time_s[b];
+            if !stays.iter().any(|stay| stay.from_s < t && t < stay.to_s) {
+                self.share[b] = 0.0;
+                self.values.iter_mut().for_each(|line| line[b] = Complex64::ZERO);
+            }
+        }
+        self
     }
 
     pub fn count(&self) -> usize {
@@ -208,7 +235,7 @@ pub(super) fn track(cells: &Cells, clear: &[u32], reach_hz: f64, duration_s: f64
     for round in 0..ROUNDS {
         let look = Look { phase: &phase, judged: &judged, phase_sd, lead: start.lead(), robust: round >= 1 };
         let (phases, apart) = measured_phases(cells, &look);
-        let wander = phases.likeliest_wander();
+        let wander = phases.likeliest_wander().min(quickest_wander(&phases));
         let smoothed = phases.smoothed(wander);
         let count = phase.len() as f64;
         let moved =
@@ -225,6 +252,17 @@ pub(super) fn track(cells: &Cells, clear: &[u32], reach_hz: f64, duration_s: f64
     let lines = (0..cells.orders.len()).map(|i| standing(cells, i, &smoothed.phase_rad)).collect();
     let orders = cells.orders.clone();
     Some(Tracked { smoothed, phases, wander, advance, orders, lines })
+}
+
+/// The quickest wander that can be told from noise: over the smoother's time constant, the
+/// fourth root of R·Δ/q, the line must be told for itself. A quicker smoother follows the noise,
+/// and finds it the more likely the more it does.
+fn quickest_wander(phases: &Phases) -> f64 {
+    let count = phases.time_s.len();
+    let length_s = (phases.time_s[count - 1] - phases.time_s[0]).max(1e-9);
+    // Information on the phase in a second: 1/(R·Δ).
+    let in_a_second = phases.variance.iter().map(|variance| 1.0 / variance).sum::<f64>() / length_s;
+    in_a_second.powi(3) / (2.0 * TOLD_NATS).powi(4)
 }
 
 /// Along what, and how, the phases of one round are measured.
@@ -406,7 +444,9 @@ struct Worth {
 fn weighted_mean(seen: &Seen, cells: &Cells, variance: f64, robust: bool) -> Worth {
     let even = |mean| Worth { mean, variance, weights: None, efficiency: 1.0 };
     let mut mean = component_median(&seen.turned);
-    if !robust || seen.turned.len() < 16 || typical_variance(&seen.squares(mean)) > 0.5 * variance {
+    let has_gaps = cells.share.contains(&0.0);
+    if !robust || has_gaps || seen.turned.len() < 16 || typical_variance(&seen.squares(mean)) > 0.5 * variance
+    {
         return even(seen.mean(|b| cells.share[b]));
     }
     let mut tail = HeavyTail::likeliest(&seen.squares(mean));
@@ -477,7 +517,8 @@ struct SearchLine {
 impl SearchLine {
     fn new(cells: &Cells, line: usize) -> Self {
         let values = &cells.values[line];
-        let most = LARGEST * median(&mut values.iter().map(|z| z.norm()).collect::<Vec<_>>());
+        let most = LARGEST
+            * median(&mut values.iter().map(|z| z.norm()).filter(|size| *size > 0.0).collect::<Vec<_>>());
         let values: Vec<Complex64> =
             values.iter().map(|z| z * (most / z.norm().max(1e-30)).min(1.0)).collect();
         // Where limiting took noise away, the noise is what differs from cell to cell.
@@ -607,7 +648,11 @@ impl<'a> Search<'a> {
         } else {
             0.0
         };
-        let chance = self.lines.len() as f64 + (1.0 + 2.0 * reach_hz * length_s * top).ln() + WINDOW_COST;
+        // What the highest of so many sums of exponentials reaches by chance (after Laurent and
+        // Massart 2000, from memory, less what one exponential needs less).
+        let lines = self.lines.len() as f64;
+        let tries = (1.0 + 2.0 * reach_hz * length_s * top).ln();
+        let chance = lines + tries + (2.0 * (lines - 1.0) * tries).sqrt() + WINDOW_COST;
         Fit {
             middle_s: 0.5 * (self.cells.time_s[bounds.0] + self.cells.time_s[bounds.1 - 1]),
             offset_hz: (best as f64 - f64::from(steps) + shift) * step_hz,

@@ -2,6 +2,7 @@
 
 use super::comb::weight;
 use super::neighbours::{Standing, standings};
+use super::quiet::over_even_noise;
 use super::supplies::{FAMILIES, SUPPLIES, is_usual, nearest_supply, prior};
 use super::swell::swell;
 use super::tracker::{Cells, Tracked};
@@ -17,6 +18,11 @@ const ALONE_STRONG: f64 = 60.0;
 /// Share of the time below which loud moments alone make a line: noise around a weak one
 /// leaves it nearly half of the time.
 const SELDOM: f64 = 0.4;
+/// Width in hertz in which public supplies are expected, and as much again: half of all that
+/// hums is there.
+const EXPECTED_HZ: f64 = 4.4;
+/// A faint line at the end of the usual range may be read so far beyond it.
+const MISREAD: f64 = 1.02;
 /// Most that one order adds.
 const MOST_FROM_ONE: f64 = 40.0;
 /// Evidence at which the find is as likely chance as not.
@@ -42,6 +48,17 @@ const FAR: f64 = 0.02;
 /// Change of frequency in a second, as a share of it, that no supply shows: struck
 /// notes, whose phase is set anew each time, do. Grids keep under 1 Hz/s in faults.
 const HASTY: f64 = 0.008;
+
+/// Shortest stay that tells, in seconds, of a comb and of a single line.
+const LEAST_STAY_S: f64 = 3.5;
+const LEAST_STAY_OF_ONE_LINE_S: f64 = 8.0;
+/// RMS swing of the amplitude of what comes and goes while it is there: a struck note fades.
+const MOST_SWELL_OF_A_STAY: f64 = 0.15;
+/// Evidence that a stay must give: as for 0.95, and more for having been picked.
+const CLEAR_STAY: f64 = 25.0;
+/// Change of frequency in a second, as a share of it: ten times what grids show day by day
+/// (common practice: some 10 mHz/s), since programme shakes the track; notes struck anew show more.
+const GRID_HASTE: f64 = 2e-3;
 
 /// How the frequency of a comb moves.
 #[derive(Debug, Clone, Copy, Default, PartialEq)]
@@ -77,7 +94,7 @@ pub(super) struct Verdict {
 
 impl Verdict {
     /// Evidence is the sum over lasting orders of their log-likelihood ratio
-    /// (power over noise in 1/T), less what the best of all frequencies tried
+    /// (power over noise in 1/T; 3 less under programme), less what the best of all frequencies tried
     /// shows by chance. Confidence is 1/(1 + e^−(evidence − 14)/3): ½ where the
     /// find may as well be chance or programme, 0.95 nine nats above. What is over
     /// ½ is pressed under 0.9 to 0.7 outside the usual range of a supply, and
@@ -91,25 +108,20 @@ impl Verdict {
         motion: &Motion,
         company: Company,
     ) -> Self {
-        let lines = fine.orders.iter().zip(&tracked.lines).zip(standings(fine, tracked));
-        let heard: Vec<Heard> = lines
-            .filter(|((_, line), _)| line.lasting >= COUNTS && line.steadiness >= STEADY && line.throughout)
-            .filter(|((_, line), _)| line.presence >= SELDOM)
-            .map(|((&order, line), beside)| Heard { order, lasting: line.lasting, beside })
-            .collect();
-        let alone = heard.iter().filter(|line| line.beside.is_none_or(|beside| stands_alone(&beside)));
-        let lasting: Vec<(u32, f64)> = alone.map(|line| (line.order, line.lasting)).collect();
+        let expected = nearest_supply(frequency_hz)
+            .is_some_and(|s| s.is_public() && s.stray(frequency_hz) <= MISREAD * s.usual);
+        let heard: Vec<Heard> = heard_all_the_time(fine, tracked, expected);
+        let alone = heard.iter().filter(|line| line.stands_alone());
+        let lasting: Vec<(u32, f64)> = alone.map(|line| (line.order, line.says())).collect();
         let family = FAMILIES.iter().find(|f| f.from_hz <= frequency_hz && frequency_hz <= f.to_hz);
-        let searched_hz = family.map_or(30.0, |f| f.to_hz - f.from_hz);
+        let searched_hz = if expected { EXPECTED_HZ } else { family.map_or(30.0, |f| f.to_hz - f.from_hz) };
         let tried = (searched_hz * duration_s.max(1.0) * 5.0).ln();
-        let weighed: f64 = lasting.iter().map(|&(k, r)| weight(k) * (r - 3.0).min(MOST_FROM_ONE)).sum();
+        let weighed: f64 = lasting.iter().map(|&(k, nats)| weight(k) * nats).sum();
         let evidence = prior(frequency_hz) * weighed - tried;
         let orders: Vec<u32> = lasting.into_iter().map(|(order, _)| order).collect();
         // One line that moves far is a gliding tone: a supply's other orders move with it.
         let alone_far =
             motion.range_hz > FAR * frequency_hz && (orders.len() < 2 || !orders.iter().any(|&k| k <= 2));
-        let expected =
-            nearest_supply(frequency_hz).is_some_and(|s| s.is_public() && s.is_usual(frequency_hz));
         let played = if expected {
             is_beside_the_line(fine, tracked, &heard, &orders)
         } else {
@@ -126,11 +138,79 @@ impl Verdict {
     }
 }
 
+impl Verdict {
+    /// Whether the evidence would do for a stretch that was picked for it.
+    pub fn stands_clear(&self) -> bool {
+        self.evidence >= CLEAR_STAY
+    }
+
+    /// On hum that comes and goes, from a stretch in which it stands clear. That stretch was
+    /// picked for it, so more is asked: a comb of two orders or a long stay, a frequency as
+    /// steady as a grid's, no vibrato, and of what `goes` a level that does not fade.
+    pub fn of_a_stay(
+        fine: &Cells,
+        tracked: &Tracked,
+        frequency_hz: f64,
+        stay_s: f64,
+        motion: &Motion,
+        goes: bool,
+    ) -> Self {
+        let verdict = Self::of(fine, tracked, frequency_hz, stay_s, motion, Company::Alone);
+        let heard = heard_all_the_time(fine, tracked, true);
+        let shaken = heard.iter().filter(|line| line.beside.is_none_or(|beside| is_shaken(&beside))).count();
+        let least_s = if verdict.lasting.len() >= 2 { LEAST_STAY_S } else { LEAST_STAY_OF_ONE_LINE_S };
+        let clear = verdict.stands_clear()
+            && stay_s >= least_s
+            && is_usual(frequency_hz)
+            && 2 * shaken <= heard.len()
+            && !(goes
+                && swell(fine, tracked, &verdict.lasting).is_none_or(|swell| swell > MOST_SWELL_OF_A_STAY))
+            && motion.hz_per_s <= GRID_HASTE * frequency_hz;
+        if clear { verdict } else { Self { found: false, confidence: 0.1 * verdict.confidence, ..verdict } }
+    }
+}
+
 /// A line that is there all the time.
 struct Heard {
     order: u32,
+    /// Power over noise in 1/T, from medians over time.
     lasting: f64,
+    /// The same from means, where the noise is even.
+    over_even: Option<f64>,
     beside: Option<Standing>,
+}
+
+impl Heard {
+    /// Nats that it adds: what stands in even noise is no programme's.
+    fn says(&self) -> f64 {
+        let against_programme = self.lasting - 3.0;
+        self.over_even.map_or(against_programme, |over| over.max(against_programme)).min(MOST_FROM_ONE)
+    }
+
+    fn stands_alone(&self) -> bool {
+        self.beside.is_none_or(|beside| {
+            // A strong line shows sidebands that noise would hide beside a weak one.
+            let needed = (beside.over_noise / 20.0).clamp(ALONE, ALONE_STRONG);
+            (beside.over_noise >= COUNTS || self.over_even.is_some_and(|over| over >= COUNTS))
+                && beside.over_highest >= needed
+        })
+    }
+}
+
+/// Where no public supply is `expected`, even noise is no reason to claim one.
+fn heard_all_the_time(fine: &Cells, tracked: &Tracked, expected: bool) -> Vec<Heard> {
+    let all = tracked.lines.iter().zip(standings(fine, tracked)).enumerate();
+    let there =
+        all.filter(|(_, (line, _))| line.steadiness >= STEADY && line.throughout && line.presence >= SELDOM);
+    there
+        .map(|(i, (line, beside))| Heard {
+            order: fine.orders[i],
+            lasting: line.lasting,
+            over_even: expected.then(|| over_even_noise(fine, i, tracked)).flatten(),
+            beside,
+        })
+        .filter(|line| line.lasting >= COUNTS || line.over_even.is_some_and(|over| over >= COUNTS))
+        .collect()
 }
 
 /// Whether a comb swells or shakes as somebody's note does. Where generators, islands,
@@ -190,12 +270,6 @@ fn are_a_supplys(orders: &[u32], frequency_hz: f64) -> bool {
     }
     let third = has(3) && (has(5) || (orders.len() >= 2 && usual));
     has(1) || has(2) || third || only(3) || only(6)
-}
-
-fn stands_alone(beside: &Standing) -> bool {
-    // A strong line shows sidebands that noise would hide beside a weak one.
-    let needed = (beside.over_noise / 20.0).clamp(ALONE, ALONE_STRONG);
-    beside.over_noise >= COUNTS && beside.over_highest >= needed
 }
 
 /// Another public supply whose comb has all these lines within its usual range.

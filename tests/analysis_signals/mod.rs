@@ -45,6 +45,25 @@ impl Noise {
     }
 }
 
+/// Trials of each case: few enough for every day, or as many as the environment asks
+/// for (`NOTCHWRIGHT_TRIALS=300`).
+pub fn trials(everyday: u64) -> u64 {
+    std::env::var("NOTCHWRIGHT_TRIALS").map_or(everyday, |count| count.parse().expect("a number of trials"))
+}
+
+/// Samples with white noise of a standard deviation added.
+pub fn with_noise(mut samples: Vec<f64>, sigma: f64, seed: u64) -> Vec<f64> {
+    let mut noise = Noise::new(seed);
+    samples.iter_mut().for_each(|x| *x += sigma * noise.normal());
+    samples
+}
+
+/// Harmonics (order, amplitude) of a constant frequency.
+pub fn steady(frequency_hz: f64, lines: &[(u32, f64)], rate: u32, duration_s: f64) -> Vec<f64> {
+    let phases: Vec<f64> = lines.iter().map(|(k, _)| f64::from(*k)).collect();
+    hum(&PhaseTrack::constant(frequency_hz, duration_s), lines, &phases, rate, duration_s)
+}
+
 /// A line at `centre_hz` whose frequency swings by ± `swing_hz` as a sine of `rate_hz`.
 pub fn phase_of_wander(centre_hz: f64, swing_hz: f64, rate_hz: f64, duration_s: f64) -> PhaseTrack {
     let knots = (duration_s * 10.0).ceil() as usize;
@@ -144,6 +163,34 @@ pub fn speech(rate: u32, duration_s: f64, seed: u64) -> Vec<f64> {
         at += length + pause;
     }
     samples
+}
+
+/// Noise with two resonances, in bursts as long and as often as syllables.
+pub fn speech_like_noise(rate: u32, duration_s: f64, seed: u64) -> Vec<f64> {
+    let mut noise = Noise::new(seed);
+    let rate = f64::from(rate);
+    let count = (duration_s * rate) as usize;
+    let centres = [noise.between(80.0, 700.0), noise.between(700.0, 1500.0)];
+    let per_s = noise.between(2.5, 6.0);
+    let resonance = |centre_hz: f64| {
+        let radius = (-TAU * 0.5 * 60.0 / rate).exp();
+        (2.0 * radius * (TAU * centre_hz / rate).cos(), radius * radius)
+    };
+    let poles = centres.map(resonance);
+    let mut past = [[0.0; 2]; 2];
+    let sample = |n: usize| {
+        let t = n as f64 / rate;
+        let syllable = (TAU * per_s * t + 0.7 * (TAU * 0.37 * t).sin()).sin().max(0.0);
+        let excited = 0.01 * noise.normal();
+        let mut sum = 0.0;
+        for ((a, b), y) in poles.iter().zip(&mut past) {
+            let next = excited + a * y[0] - b * y[1];
+            *y = [next, y[0]];
+            sum += next;
+        }
+        syllable * sum
+    };
+    (0..count).map(sample).collect()
 }
 
 /// Mean square.

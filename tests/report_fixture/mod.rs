@@ -377,6 +377,7 @@ fn make_tide_gauge() -> Findings {
             frequency_se_hz: Some(2.1e-5),
             spread_hz: Some(0.011),
             spread_floor_hz: Some(0.0016),
+            share_of_time: None,
             confidence: 0.9999,
         },
         harmonics,
