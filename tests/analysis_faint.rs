@@ -10,7 +10,7 @@ const RATE: u32 = 2000;
 fn found_30_db_under(programme: fn(u32, f64, u64) -> Vec<f64>, seeds: u64) -> u64 {
     let duration_s = 30.0;
     let is_found = |seed: &u64| {
-        let frequency_hz = if seed % 2 == 0 { 50.02 } else { 59.97 };
+        let frequency_hz = if seed.is_multiple_of(2) { 50.02 } else { 59.97 };
         let programme = programme(4000, duration_s, 40 + seed);
         let line = steady(frequency_hz, &[(1, 1.0), (2, 0.4), (3, 0.6), (5, 0.3)], 4000, duration_s);
         let gain = (power(&programme) / power(&line) / 1000.0).sqrt();
