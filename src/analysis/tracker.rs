@@ -167,7 +167,7 @@ impl Cells {
             let (from, to) = (b.saturating_sub(1), (b + 1).min(last));
             let offset_hz = (phase[to] - phase[from]) / (TAU * (self.time_s[to] - self.time_s[from]));
             let away_hz = (k * offset_hz).clamp(-most_hz, most_hz);
-            self.response_of((self.share[b] * self.blocks as f64).round(), away_hz)
+            self.response_of((self.share[b] * self.blocks as f64).round().max(1.0), away_hz)
         };
         (0..=last).map(one).collect()
     }
