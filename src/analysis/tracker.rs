@@ -22,7 +22,10 @@ const LONGEST_WINDOW_S: f64 = 32.0;
 /// Offsets that the search tries side by side.
 const TOGETHER: usize = 8;
 /// Rounds of the last step.
-const ROUNDS: usize = 7;
+const ROUNDS: usize = 8;
+/// Of these, so many in which cells differ in worth only by what they read: until the track is
+/// found, cells that it has not reached look as if programme disturbed them.
+const PLAIN_ROUNDS: usize = 3;
 /// A harmonic counts from this ratio of power to noise in 1/T.
 const SIGNIFICANT: f64 = 8.0;
 /// What a window of its own must gain, in nats.
@@ -32,9 +35,6 @@ const WINDOW_COST: f64 = 2.0;
 const CLEAR_IN_A_CELL: f64 = 900.0;
 /// Share of the mean amplitude under which the line is taken to be gone (20 dB).
 const GONE: f64 = 0.1;
-/// Farthest off its reference, in cycles a cell, that a line's reading is foretold: beyond, where
-/// the response goes through zero, a phase that is not found yet would send it anywhere.
-const FARTHEST_READ: f64 = 0.7;
 /// Variance of a phase that nothing is known of, in rad²: many turns.
 const UNKNOWN: f64 = 1e4;
 /// Nats of a line that are told from noise.
@@ -162,12 +162,10 @@ impl Cells {
     fn responses(&self, line: usize, phase: &[f64]) -> Vec<f64> {
         let k = f64::from(self.orders[line]);
         let last = phase.len() - 1;
-        let most_hz = FARTHEST_READ / self.length_s;
         let one = |b: usize| {
             let (from, to) = (b.saturating_sub(1), (b + 1).min(last));
             let offset_hz = (phase[to] - phase[from]) / (TAU * (self.time_s[to] - self.time_s[from]));
-            let away_hz = (k * offset_hz).clamp(-most_hz, most_hz);
-            self.response_of((self.share[b] * self.blocks as f64).round().max(1.0), away_hz)
+            self.response_of((self.share[b] * self.blocks as f64).round().max(1.0), k * offset_hz)
         };
         (0..=last).map(one).collect()
     }
@@ -233,7 +231,13 @@ pub(super) fn track(cells: &Cells, clear: &[u32], reach_hz: f64, duration_s: f64
     let mut judged = phase.clone();
     let mut found = None;
     for round in 0..ROUNDS {
-        let look = Look { phase: &phase, judged: &judged, phase_sd, lead: start.lead(), robust: round >= 1 };
+        let look = Look {
+            phase: &phase,
+            judged: &judged,
+            phase_sd,
+            lead: start.lead(),
+            robust: round >= PLAIN_ROUNDS,
+        };
         let (phases, apart) = measured_phases(cells, &look);
         let wander = phases.likeliest_wander().min(quickest_wander(&phases));
         let smoothed = phases.smoothed(wander);
