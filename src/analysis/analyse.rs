@@ -20,6 +20,7 @@ use super::spread::Wander;
 use super::supplies::nearest_supply;
 use super::survey::Surveyed;
 use super::tracker::Tracked;
+use super::verdict::are_a_notes;
 use super::{AnalyseOptions, AnalysisError, PhaseTrack};
 use crate::capture::Capture;
 
@@ -206,8 +207,8 @@ fn analyse_one(
     let mut hum = third_pass(capture, channel, &followed, &verdict, &besides, &mut |p| {
         progress((2.0 + p) / 3.0);
     })?;
-    if is_a_notes(&hum.listed) {
-        // What made the find fades along the whole track.
+    // Where what made the find fades along the whole track: a comb of three orders may, under music.
+    if verdict.lasting.len() < 3 && are_a_notes(&hum.listed, hum.frequency_hz) {
         one.confidence *= 0.1;
         progress(1.0);
         return Ok(one);
@@ -238,12 +239,6 @@ fn analyse_one(
     one.hum = Some(hum);
     progress(1.0);
     Ok(one)
-}
-
-/// Whether what is left in the account is one line above the third, or nothing but lines above
-/// the sixth: no supply shows those alone, and they are multiples of many notes.
-fn is_a_notes(listed: &[u32]) -> bool {
-    matches!(listed, [order] if *order > 3) || listed.iter().all(|order| *order > 6)
 }
 
 fn best_of(found: &[Candidate]) -> Option<&Candidate> {

@@ -77,7 +77,8 @@ pub(super) fn with_gaps(
     }
     // Programme that stands clear for a moment tells nothing of the hum; a comb that stands clear
     // where it is, goes, and fades or shakes like a note, does.
-    let is_a_notes = share < MOST_OF_THE_TIME && judged.verdict.stands_clear();
+    let is_a_notes =
+        share < MOST_OF_THE_TIME && judged.verdict.lasting.len() >= 2 && judged.verdict.stands_clear();
     is_a_notes.then_some((None, judged.verdict))
 }
 

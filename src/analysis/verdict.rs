@@ -228,7 +228,10 @@ fn is_played(fine: &Cells, tracked: &Tracked, heard: &[Heard], company: Company)
 /// note beside it comes and goes against the supply's phase, and of the comb of a
 /// rhythm hardly a line stands alone.
 fn is_beside_the_line(fine: &Cells, tracked: &Tracked, heard: &[Heard], alone: &[u32]) -> bool {
-    let comes_and_goes = swell(fine, tracked, alone).is_some_and(|swell| swell > MOST_SWELL_OF_ANY);
+    let swells = |orders: &[u32]| swell(fine, tracked, orders).is_some_and(|swell| swell > MOST_SWELL_OF_ANY);
+    // Notes beside one order do not hide that others hold still.
+    let still = alone.iter().filter(|order| !swells(&[**order])).count();
+    let comes_and_goes = swells(alone) && still < 2;
     comes_and_goes || 4 * alone.len() < heard.len()
 }
 
@@ -247,6 +250,12 @@ fn below_ceiling(score: f64, frequency_hz: f64, ambiguous: bool) -> f64 {
         _ => ISLAND_CEILING - 0.2 * remote,
     };
     if score < 0.5 { score } else { 0.5 + (score - 0.5) * (2.0 * ceiling - 1.0) }
+}
+
+/// Whether what is left in the account is high orders that no supply shows alone: they are
+/// multiples of many notes.
+pub(super) fn are_a_notes(listed: &[u32], frequency_hz: f64) -> bool {
+    listed.iter().all(|order| *order > 3) && !are_a_supplys(listed, frequency_hz)
 }
 
 /// Whether these orders can be all that is heard of a supply. A railway's or an
