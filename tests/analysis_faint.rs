@@ -34,7 +34,7 @@ fn hum_30_db_under_speech_is_found() {
 }
 
 #[test]
-#[ignore = "not met: MUSIC_FIGURES; elsewhere one line alone stands clear of the notes, which is not enough to claim"]
+#[ignore = "not met: 15 of 20 seeds are found; in the others one line alone stands clear of the notes, or notes beside the lines make them swell"]
 fn hum_30_db_under_music_is_found() {
     let seeds = trials(6).min(40);
     assert_eq!(found_30_db_under(music, seeds), seeds);
