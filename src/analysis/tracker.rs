@@ -313,11 +313,11 @@ fn measured_phases(cells: &Cells, look: &Look) -> (Phases, f64) {
             judged: turned(cells, line, judged).collect(),
             reads: cells.responses(line, phase),
         };
-        let Worth { mean, variance, weights, efficiency } =
+        let Worth { mean, variance, typical, weights, efficiency } =
             weighted_mean(&seen, cells, cells.variance(line), robust);
         for (b, z) in seen.turned.iter().enumerate() {
             let weight = cells.share[b] * weights.as_ref().map_or(1.0, |w| w[b]) / variance;
-            let there = seen.reads[b] * share_there(*z, mean * seen.reads[b], variance);
+            let there = seen.reads[b] * share_there(*z, mean * seen.reads[b], typical);
             pull[b] += weight * k * there * mean.norm_sqr() * stray(*z, mean * there, variance) * there;
             let told = efficiency * weight * k * k * there * there * mean.norm_sqr();
             information[b] += told;
@@ -439,6 +439,8 @@ struct Worth {
     mean: Complex64,
     /// Noise variance of a component.
     variance: f64,
+    /// The same in a typical cell: of hum that is switched the first is mostly its own coming and going.
+    typical: f64,
     /// Weights where the noise is so heavy-tailed (music, clicks) that cells differ.
     weights: Option<Vec<f64>>,
     /// What the weights' sum tells of a position, over what it seems to.
@@ -446,11 +448,12 @@ struct Worth {
 }
 
 fn weighted_mean(seen: &Seen, cells: &Cells, variance: f64, robust: bool) -> Worth {
-    let even = |mean| Worth { mean, variance, weights: None, efficiency: 1.0 };
     let mut mean = component_median(&seen.turned);
+    let typical = typical_variance(&seen.squares(mean));
+    let even =
+        |mean| Worth { mean, variance, typical: typical.min(variance), weights: None, efficiency: 1.0 };
     let has_gaps = cells.share.contains(&0.0);
-    if !robust || has_gaps || seen.turned.len() < 16 || typical_variance(&seen.squares(mean)) > 0.5 * variance
-    {
+    if !robust || has_gaps || seen.turned.len() < 16 || typical > 0.5 * variance {
         return even(seen.mean(|b| cells.share[b]));
     }
     let mut tail = HeavyTail::likeliest(&seen.squares(mean));
@@ -463,7 +466,8 @@ fn weighted_mean(seen: &Seen, cells: &Cells, variance: f64, robust: bool) -> Wor
         weights = squares.iter().map(|square| tail.weight(*square)).collect();
         mean = seen.mean(|b| weights[b]);
     }
-    Worth { mean, variance: tail.variance, weights: Some(weights), efficiency: tail.efficiency() }
+    let variance = tail.variance;
+    Worth { mean, variance, typical: variance, weights: Some(weights), efficiency: tail.efficiency() }
 }
 
 /// How a harmonic stands along the track.
