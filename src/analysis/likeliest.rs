@@ -22,6 +22,8 @@ const WORTH_A_LOOK: f64 = 3.0;
 const CERTAIN: f64 = 25.0;
 /// A steady line's reference that is so far off is mended before the next look.
 const FAR_OFF_HZ: f64 = 0.05;
+/// A track ends within the reach of its search, but for what smoothing adds.
+const CAUGHT: f64 = 1.5;
 /// Nats that being picked for its evidence may have given a comb.
 const PICKED: f64 = 4.0;
 
@@ -123,8 +125,13 @@ impl Trial {
         let mut gather = Gather::new(rate_hz, &reference, &orders, frames);
         gather.push(&survey.opening);
         let Gathered { cells, fine } = gather.finish();
-        let tracked = track(&cells, &candidate.orders, reach_hz(survey, &candidate), duration_s)?;
+        let reach_hz = reach_hz(survey, &candidate);
+        let tracked = track(&cells, &candidate.orders, reach_hz, duration_s)?;
         let frequency_hz = mean_frequency_hz(&reference, &tracked, duration_s);
+        // What was caught so far off is another comb's line, seen over its gaps.
+        if (frequency_hz - candidate.mean_hz()).abs() > CAUGHT * reach_hz {
+            return None;
+        }
         let verdict = Verdict::of(
             &fine,
             &tracked,
